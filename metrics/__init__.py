@@ -1,0 +1,1 @@
+"""Metrics of single-target tracking on plain arrays: trials first, then scans."""
