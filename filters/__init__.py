@@ -1,0 +1,1 @@
+"""Models of motion and measurement, the update, and every filtering strategy."""

@@ -1,0 +1,74 @@
+"""The table of hypotheses: one row for each way to explain a scan by one component of the prior.
+
+Row h says: the target was component `parent`, and detection `detection` was its own, or it was not
+detected (NOT_DETECTED). Its mean stands in row h of an array beside the table, its covariance in row
+`covariance` of another: detections of one parent usually share theirs.
+"""
+
+from __future__ import annotations
+
+import math
+from typing import Any, NamedTuple
+
+import numpy as np
+from numba import from_dtype, types
+
+from filters.compiled import COMPILING, helper
+from filters.mixture import Mixture
+from filters.models.contract import MATRIX, VECTOR
+
+NOT_DETECTED = -1
+
+HYPOTHESIS = np.dtype(
+    [
+        ("log_weight", np.float64),  # not normalised
+        ("weight", np.float64),  # normalised over the table
+        ("distance", np.float64),  # squared distance of the detection, 0 if not detected
+        ("clutter", np.float64),  # intensity at the detection
+        ("parent", np.int64),
+        ("detection", np.int64),
+        ("covariance", np.int64),
+        ("group", np.int64),  # for the reduction's own use
+        ("group_weight", np.float64),  # likewise
+    ],
+    align=True,
+)
+
+
+def room_for_table(rows: int) -> np.ndarray:
+    """An empty table; plain Python needs records with attributes where compiled code does not."""
+    table = np.zeros(rows, HYPOTHESIS)
+    return table if COMPILING else table.view(np.recarray)
+
+
+class Hypotheses(NamedTuple):
+    """Room for the hypotheses of one scan; how many rows are in use is told beside it."""
+
+    table: Any  # (capacity,) HYPOTHESIS
+    means: Any  # (capacity, n)
+    covariances: Any  # (at least the highest index in `covariance` + 1, n, n)
+    work: Any  # (n + 2, n) for the reduction's own use
+
+
+_CUBE = types.Array(types.float64, 3, "C")
+_TABLE = types.Array(from_dtype(HYPOTHESIS), 1, "C")
+_HYPOTHESES = types.NamedTuple((_TABLE, MATRIX, _CUBE, MATRIX), Hypotheses)
+_MIXTURE = types.NamedTuple((VECTOR, MATRIX, _CUBE), Mixture)
+
+# A reduction: (hypotheses, rows, origin, settings, mixture) -> number of components written
+REDUCE = types.int64(_HYPOTHESES, types.int64, types.int64, VECTOR, _MIXTURE)
+
+
+@helper
+def normalise(table: Any, rows: int) -> None:
+    """Set weight = exp(log_weight) / sum, safe at any magnitude; at least one must be above -inf."""
+    heaviest = -math.inf
+    for h in range(rows):
+        heaviest = max(heaviest, table[h].log_weight)
+    total = 0.0
+    for h in range(rows):
+        weight = math.exp(table[h].log_weight - heaviest)
+        table[h].weight = weight
+        total += weight
+    for h in range(rows):
+        table[h].weight /= total

@@ -1,0 +1,76 @@
+"""Gaussian mixtures as kernels hold them, and their moments, accumulated one component at a time."""
+
+from __future__ import annotations
+
+from typing import Any, NamedTuple
+
+from filters.compiled import helper
+
+
+class Mixture(NamedTuple):
+    """Room for a mixture of up to `capacity` components; how many are in use is told beside it."""
+
+    weights: Any  # (capacity,), summing to one
+    means: Any  # (capacity, n)
+    covariances: Any  # (capacity, n, n)
+
+
+@helper
+def clear_moments(n: int, mean: Any, covariance: Any) -> None:
+    """Start from nothing."""
+    for row in range(n):
+        mean[row] = 0.0
+        for column in range(n):
+            covariance[row, column] = 0.0
+
+
+@helper
+def add_to_mean(n: int, weight: float, component: Any, mean: Any) -> None:
+    """Add weight * component, (n,)."""
+    for row in range(n):
+        mean[row] += weight * component[row]
+
+
+@helper
+def add_to_covariance(
+    n: int, weight: float, component: Any, spread: Any, mean: Any, covariance: Any
+) -> None:
+    """Add weight * (P_i + (mu_i - mu)(mu_i - mu)') to the lower triangle.
+
+    component mu_i, mean mu (n,); spread P_i, covariance (n, n). The mean must be complete.
+    """
+    for row in range(n):
+        offset = weight * (component[row] - mean[row])
+        for column in range(row + 1):
+            covariance[row, column] += weight * spread[row, column] + offset * (
+                component[column] - mean[column]
+            )
+
+
+@helper
+def mirror(n: int, covariance: Any) -> None:
+    """Copy the lower triangle to the upper."""
+    for row in range(n):
+        for column in range(row):
+            covariance[column, row] = covariance[row, column]
+
+
+@helper
+def copy_gaussian(n: int, mean: Any, covariance: Any, to_mean: Any, to_covariance: Any) -> None:
+    """Copy one component."""
+    for row in range(n):
+        to_mean[row] = mean[row]
+        for column in range(n):
+            to_covariance[row, column] = covariance[row, column]
+
+
+@helper
+def mixture_moments(n: int, mixture: Mixture, count: int, mean: Any, covariance: Any) -> None:
+    """Write mean (n,) and covariance (n, n) of the first `count` components together."""
+    weights, means, covariances = mixture
+    clear_moments(n, mean, covariance)
+    for i in range(count):
+        add_to_mean(n, weights[i], means[i], mean)
+    for i in range(count):
+        add_to_covariance(n, weights[i], means[i], covariances[i], mean, covariance)
+    mirror(n, covariance)

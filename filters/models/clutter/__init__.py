@@ -1,0 +1,1 @@
+"""Clutter maps: intensity of the Poisson process of false detections."""

@@ -1,0 +1,1 @@
+"""Detection laws: how probably a target is detected at a scan."""

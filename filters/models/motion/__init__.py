@@ -1,0 +1,13 @@
+"""Motion models: how a target moves, for the truth and as a strategy assumes it."""
+
+from filters.models.motion.coordinated_turn import CoordinatedTurn
+from filters.models.motion.nearly_constant_acceleration import NearlyConstantAcceleration
+from filters.models.motion.nearly_constant_velocity import NearlyConstantVelocity
+from filters.models.motion.piecewise_constant_acceleration import PiecewiseConstantAcceleration
+
+MOTIONS = (
+    NearlyConstantVelocity,
+    PiecewiseConstantAcceleration,
+    NearlyConstantAcceleration,
+    CoordinatedTurn,
+)

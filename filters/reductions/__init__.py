@@ -1,0 +1,1 @@
+"""Reductions: from the table of hypotheses to the smaller mixture that the next scan starts from."""

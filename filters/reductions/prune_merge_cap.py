@@ -1,0 +1,145 @@
+"""Prune, merge greedily, cap: the reduction of a Gaussian mixture.
+
+Weights below a share of the total are dropped. Then, from the heaviest hypothesis i on, every j with
+(mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched. Then the
+heaviest groups are kept. Weights are rescaled after each step.
+
+Source: the clustering algorithm of Salmond (1990), SPIE 1305, Mixture reduction algorithms for target
+tracking in clutter, with the heaviest component's own covariance as the measure of distance.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+import numpy as np
+
+from filters.cholesky import factorise, squared_distance
+from filters.compiled import helper
+from filters.hypotheses import Hypotheses
+from filters.mixture import Mixture, add_to_covariance, add_to_mean, clear_moments, mirror
+
+_DROPPED = -2
+_FREE = -1
+
+
+def reduction_settings(prune_below: float, merge_below: float, max_components: int) -> np.ndarray:
+    """Pack the settings of this reduction.
+
+    prune_below     share of the total weight, [0, 1)
+    merge_below     squared distance, unitless; 0 merges nothing
+    max_components  at least 1
+    """
+    return np.array([prune_below, merge_below, max_components], float)
+
+
+@helper
+def _prune(table: Any, rows: int, prune_below: float) -> None:
+    """Drop light rows; the heaviest always stays."""
+    most = 0.0
+    for h in range(rows):
+        most = max(most, table[h].weight)
+    limit = min(prune_below, most)
+    for h in range(rows):
+        kept = table[h].weight >= limit and table[h].weight > 0.0
+        table[h].group = _FREE if kept else _DROPPED
+
+
+@helper
+def _heaviest_free(table: Any, rows: int) -> int:
+    best = -1
+    for h in range(rows):
+        if table[h].group == _FREE and (best < 0 or table[h].weight > table[best].weight):
+            best = h
+    return best
+
+
+@helper
+def _gather(
+    n: int, head: int, table: Any, rows: int, means: Any, factor: Any, limit: float, work: Any
+) -> None:
+    """Put every free row near the head into its group."""
+    difference, solved = work[0], work[1]
+    table[head].group = head
+    table[head].group_weight = table[head].weight
+    for h in range(rows):
+        if table[h].group != _FREE:
+            continue
+        for i in range(n):
+            difference[i] = means[head, i] - means[h, i]
+        if squared_distance(n, factor, difference, limit, solved) < limit:
+            table[h].group = head
+            table[head].group_weight += table[h].weight
+
+
+@helper
+def _heaviest_group(table: Any, rows: int) -> int:
+    best = -1
+    for h in range(rows):
+        is_head = table[h].group == h and table[h].group_weight > 0.0
+        if is_head and (best < 0 or table[h].group_weight > table[best].group_weight):
+            best = h
+    return best
+
+
+@helper
+def _write_group(
+    n: int, head: int, hypotheses: Hypotheses, rows: int, mixture: Mixture, place: int
+) -> None:
+    """Write weight and matched moments of a group into one place of the mixture."""
+    table, means, covariances, _ = hypotheses
+    mean, covariance = mixture.means[place], mixture.covariances[place]
+    total = table[head].group_weight
+    clear_moments(n, mean, covariance)
+    for h in range(rows):
+        if table[h].group == head:
+            add_to_mean(n, table[h].weight / total, means[h], mean)
+    for h in range(rows):
+        if table[h].group == head:
+            spread = covariances[table[h].covariance]
+            add_to_covariance(n, table[h].weight / total, means[h], spread, mean, covariance)
+    mirror(n, covariance)
+    mixture.weights[place] = total
+
+
+@helper
+def _merge(n: int, hypotheses: Hypotheses, rows: int, merge_below: float) -> None:
+    """Form groups greedily from the heaviest free row."""
+    table, means, covariances, work = hypotheses
+    factor = work[2:]
+    head = _heaviest_free(table, rows)
+    while head >= 0:
+        factorised = factorise(n, covariances[table[head].covariance], factor)
+        limit = merge_below if factorised else 0.0
+        _gather(n, head, table, rows, means, factor, limit, work)
+        head = _heaviest_free(table, rows)
+
+
+@helper
+def _keep_heaviest(n: int, hypotheses: Hypotheses, rows: int, most: int, mixture: Mixture) -> int:
+    """Write the heaviest groups, rescaled to a total of one."""
+    table = hypotheses.table
+    count = 0
+    total = 0.0
+    head = _heaviest_group(table, rows)
+    while head >= 0 and count < most:
+        _write_group(n, head, hypotheses, rows, mixture, count)
+        total += table[head].group_weight
+        table[head].group_weight = 0.0  # written
+        count += 1
+        head = _heaviest_group(table, rows)
+    for place in range(count):
+        mixture.weights[place] /= total
+    return count
+
+
+def prune_merge_cap(n: int) -> Callable[..., int]:
+    """Prune, merge greedily from the heaviest, keep the heaviest."""
+
+    def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
+        _prune(hypotheses.table, rows, settings[0])
+        _merge(n, hypotheses, rows, settings[1])
+        return _keep_heaviest(n, hypotheses, rows, int(settings[2]), mixture)
+
+    return reduce

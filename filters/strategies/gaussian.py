@@ -1,0 +1,127 @@
+"""Strategies of Gaussian components: one filter, with a choice of reduction."""
+
+from __future__ import annotations
+
+import functools
+from collections.abc import Callable
+from typing import Annotated, Any, ClassVar, Literal
+
+import numpy as np
+from pydantic import Field
+
+from filters.compiled import compile_to_pointer
+from filters.hypotheses import REDUCE
+from filters.hypothesis_filter import (
+    ESTIMATE_HEAVIEST,
+    ESTIMATE_MEAN,
+    HypothesisStrategy,
+    compiled_filter,
+    room_for,
+)
+from filters.models.record import Count, NonNegative
+from filters.random_numbers import Numbers
+from filters.reductions.keep_one import heaviest, nearest, true_origin
+from filters.reductions.match_moments import match_moments
+from filters.reductions.prune_merge_cap import prune_merge_cap, reduction_settings
+from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
+from filters.track import Scans, Tracks, room_for_tracks
+
+NO_SETTINGS = np.zeros(1)
+
+
+@functools.cache
+def compiled_reduction(reduction: Callable[[int], Callable[..., int]], n: int) -> Any:
+    """Return a reduction compiled for states of n numbers."""
+    return compile_to_pointer(REDUCE, reduction(n))
+
+
+class GaussianStrategy(Strategy):
+    """A filter of Gaussian components; a kind names its reduction."""
+
+    gate_probability: GateProbability = 0.9997
+
+    reduction: ClassVar[Callable[[int], Callable[..., int]]]
+
+    def capacity(self) -> int:
+        """Most components that the reduction leaves."""
+        return 1
+
+    def reduction_settings(self) -> np.ndarray:
+        """Settings as the reduction takes them."""
+        return NO_SETTINGS
+
+    def estimate_choice(self) -> int:
+        """How a mixture becomes one estimate."""
+        return ESTIMATE_MEAN
+
+    def run(
+        self, assumptions: Assumptions, scans: Scans, numbers: Numbers, first_trial: int
+    ) -> Tracks:
+        """Follow the target through a batch of trials."""
+        n = len(assumptions.prior.mean)
+        m = scans.detections.shape[1]
+        strategy = HypothesisStrategy(
+            compiled_reduction(type(self).reduction, n),
+            self.reduction_settings(),
+            self.capacity(),
+            gate_of(self.gate_probability, m),
+            self.ends.rule(assumptions.axes),
+            self.estimate_choice(),
+        )
+        tracks = room_for_tracks(*scans.origins.shape, n)
+        room = room_for(n, m, strategy.capacity, scans.most_detections)
+        compiled_filter(n, m)(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
+        return tracks
+
+
+class NearestNeighbour(GaussianStrategy):
+    """Takes the detection of least squared distance in the gate as certain."""
+
+    kind: Literal["nearest-neighbour"]
+    reduction: ClassVar = nearest
+
+
+class MostProbableHypothesis(GaussianStrategy):
+    """Takes the heaviest of the M + 1 hypotheses as certain; it may choose 'not detected'."""
+
+    kind: Literal["most-probable-hypothesis"]
+    reduction: ClassVar = heaviest
+
+
+class ProbabilisticDataAssociation(GaussianStrategy):
+    """Matches the moments of all hypotheses by one Gaussian."""
+
+    kind: Literal["pda"]
+    reduction: ClassVar = match_moments
+
+
+class GaussianMixture(GaussianStrategy):
+    """Keeps several components: light ones pruned, close ones merged, the heaviest kept."""
+
+    kind: Literal["gaussian-mixture"]
+    max_components: Count = 20
+    prune_below: Annotated[NonNegative, Field(lt=1.0)] = 1e-4
+    merge_below: NonNegative = 0.5
+    estimate: Literal["mean", "heaviest"] = "mean"
+    reduction: ClassVar = prune_merge_cap
+
+    def capacity(self) -> int:
+        """Most components that the reduction leaves."""
+        return self.max_components
+
+    def reduction_settings(self) -> np.ndarray:
+        """Settings as the reduction takes them."""
+        return reduction_settings(self.prune_below, self.merge_below, self.max_components)
+
+    def estimate_choice(self) -> int:
+        """How the mixture becomes one estimate."""
+        return ESTIMATE_HEAVIEST if self.estimate == "heaviest" else ESTIMATE_MEAN
+
+
+class KnownAssociation(GaussianStrategy):
+    """Is told which detection is the target's: a reference, possible only in simulation."""
+
+    kind: Literal["known-association"]
+    reduction: ClassVar = true_origin
+    is_told_origins: ClassVar[bool] = True
+    gate_probability: Literal[1.0] = 1.0

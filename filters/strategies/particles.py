@@ -1,0 +1,51 @@
+"""The particle filter as a strategy."""
+
+from __future__ import annotations
+
+from typing import Annotated, ClassVar, Literal
+
+from pydantic import Field
+
+from filters.particle_filter import ParticleStrategy, cloud_for, compiled_particle_filter
+from filters.random_numbers import Numbers
+from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
+from filters.track import Scans, Tracks, room_for_tracks
+
+ParticleCount = Annotated[int, Field(strict=True, ge=2, le=10_000_000)]
+Share = Annotated[float, Field(strict=True, ge=0.0, le=1.0)]
+
+
+class ParticleFilter(Strategy):
+    """A bootstrap particle filter with the association summed out of the likelihood."""
+
+    kind: Literal["particle-filter"]
+    particles: ParticleCount = 1000
+    resample_below: Share = 0.5  # effective number of samples, share of `particles`
+    gate_probability: GateProbability = 0.9997  # only for ending the track after empty scans
+
+    counts_hypotheses: ClassVar[bool] = False
+
+    def run(
+        self, assumptions: Assumptions, scans: Scans, numbers: Numbers, first_trial: int
+    ) -> Tracks:
+        """Follow the target through a batch of trials."""
+        n = len(assumptions.prior.mean)
+        m = scans.detections.shape[1]
+        settings = ParticleStrategy(
+            self.particles,
+            self.resample_below,
+            gate_of(self.gate_probability, m),
+            self.ends.rule(assumptions.axes),
+        )
+        tracks = room_for_tracks(*scans.origins.shape, n)
+        compiled_particle_filter(n, m)(
+            assumptions.models,
+            settings,
+            assumptions.prior,
+            scans,
+            first_trial,
+            numbers,
+            tracks,
+            cloud_for(n, m, self.particles, scans.most_detections),
+        )
+        return tracks

@@ -1,0 +1,70 @@
+"""The contract of a strategy: checked settings, and a function from scans to tracks."""
+
+from __future__ import annotations
+
+import math
+from typing import Annotated, Any, ClassVar, NamedTuple
+
+from pydantic import Field
+from scipy.stats import chi2
+
+from filters.models.contract import Models
+from filters.models.record import Count, Positive, Record
+from filters.random_numbers import Numbers
+from filters.track import Ending, Prior, Scans, Tracks
+from filters.update import Gate
+
+GateProbability = Annotated[float, Field(strict=True, gt=0.0, le=1.0)]
+
+
+class Assumptions(NamedTuple):
+    """All that a strategy knows of target and sensor; it need not be true."""
+
+    models: Models
+    prior: Prior
+    axes: int
+
+
+class TrackEnding(Record):
+    """When a strategy gives its track up; from then on it has no estimate."""
+
+    empty_scans: Count | None = None  # in a row with nothing in the gate
+    position_sd_above_m: Positive | None = None  # of any axis
+
+    def rule(self, axes: int) -> Ending:
+        """The rule as kernels take it."""
+        return Ending(
+            self.empty_scans or 0,
+            math.inf if self.position_sd_above_m is None else self.position_sd_above_m,
+            axes,
+        )
+
+
+class Strategy(Record):
+    """Settings that all strategies share; a family adds its own and its `run`."""
+
+    ends: TrackEnding = TrackEnding()
+    # What differs from the scene, mirroring it; resolved by who reads the study.
+    assumes: dict[str, Any] = Field(default_factory=dict)
+
+    # Only a reference may be told which detection is the target's.
+    is_told_origins: ClassVar[bool] = False
+    # Whether the number of hypotheses formed is a measure of its cost.
+    counts_hypotheses: ClassVar[bool] = True
+
+    def run(
+        self, assumptions: Assumptions, scans: Scans, numbers: Numbers, first_trial: int
+    ) -> Tracks:
+        """Follow the target through a batch of trials.
+
+        numbers         the study's random numbers, for strategies that draw some
+        first_trial     number of the batch's first trial, which names its random streams
+        """
+        raise NotImplementedError
+
+
+def gate_of(probability: float, measurement_size: int) -> Gate:
+    """Gate of a probability PG: the chi-square quantile for measurements of that size; 1 is none."""
+    if probability >= 1.0:
+        return Gate(1.0, math.inf)
+    return Gate(probability, float(chi2.ppf(probability, measurement_size)))

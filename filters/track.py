@@ -1,0 +1,102 @@
+"""What goes into a strategy and what comes out: prior, scans, when to give up, and tracks."""
+
+from __future__ import annotations
+
+import math
+from typing import Any, NamedTuple
+
+import numpy as np
+
+from filters.compiled import helper
+
+ORIGIN_UNKNOWN = -2
+
+
+class Prior(NamedTuple):
+    """What a strategy is told of the target at the first scan."""
+
+    mean: np.ndarray  # (n,)
+    covariance: np.ndarray  # (n, n)
+
+
+class Scans(NamedTuple):
+    """The detections of a batch of trials; which of them are the target's is not told.
+
+    Only known association is given origins; everyone else finds ORIGIN_UNKNOWN there.
+    """
+
+    intervals: np.ndarray  # (scans,) s since the scan before; the first is not used
+    detections: np.ndarray  # (total, m) all trials and scans in a row, at random within a scan
+    offsets: np.ndarray  # (trials, scans + 1) scan k of a trial is offsets[k] : offsets[k + 1]
+    origins: np.ndarray  # (trials, scans) index within the scan, NOT_DETECTED or ORIGIN_UNKNOWN
+    most_detections: int  # in any one scan
+
+
+class Scan(NamedTuple):
+    """One scan as a strategy sees it."""
+
+    interval: float  # s since the scan before
+    site: Any  # (2 * axes,) the sensor's position and velocity
+    detections: Any  # (M, m)
+    origin: int  # the target's detection, NOT_DETECTED or ORIGIN_UNKNOWN
+
+
+class Ending(NamedTuple):
+    """When a strategy gives up a track; from then on it has no estimate."""
+
+    empty_scans: int  # in a row with nothing in the gate; 0 for never
+    position_sd: float  # m, of any axis; infinite for never
+    axes: int
+
+
+class Tracks(NamedTuple):
+    """Room for what a strategy says of a batch of trials, filled by its kernel."""
+
+    means: np.ndarray  # (trials, scans, n)
+    covariances: np.ndarray  # (trials, scans, n, n)
+    present: np.ndarray  # (trials, scans) bool: there is an estimate
+    own_distance: np.ndarray  # (trials, scans) squared distance of the true origin, where known
+    hypotheses: np.ndarray  # (trials,) formed before reduction, summed over scans
+    scans_run: np.ndarray  # (trials,) scans until the track was ended
+    impossible: np.ndarray  # (trials,) scans impossible under the model assumed
+
+
+def room_for_tracks(trials: int, scans: int, n: int) -> Tracks:
+    """Empty room: no estimate anywhere, NaN where nothing is written."""
+    return Tracks(
+        np.full((trials, scans, n), np.nan),
+        np.full((trials, scans, n, n), np.nan),
+        np.zeros((trials, scans), np.bool_),
+        np.full((trials, scans), np.nan),
+        np.zeros(trials, np.int64),
+        np.zeros(trials, np.int64),
+        np.zeros(trials, np.int64),
+    )
+
+
+@helper
+def scan_of(scans: Scans, sites: Any, trial: int, k: int) -> Scan:
+    """Scan k of a trial; sites (scans, 2 * axes), or (1, 2 * axes) for a sensor that stays."""
+    site = sites[k] if sites.shape[0] > 1 else sites[0]
+    first, end = scans.offsets[trial, k], scans.offsets[trial, k + 1]
+    return Scan(scans.intervals[k], site, scans.detections[first:end], scans.origins[trial, k])
+
+
+@helper
+def clear_estimate(n: int, mean: Any, covariance: Any) -> None:
+    """Write NaN: no estimate."""
+    for row in range(n):
+        mean[row] = math.nan
+        for column in range(n):
+            covariance[row, column] = math.nan
+
+
+@helper
+def past_limit(ending: Ending, empty_scans: int, covariance: Any) -> bool:
+    """Whether the track is to be given up after a scan; covariance (n, n), position first."""
+    if ending.empty_scans > 0 and empty_scans >= ending.empty_scans:
+        return True
+    for axis in range(ending.axes):
+        if math.sqrt(covariance[axis, axis]) > ending.position_sd:
+            return True
+    return False

@@ -1,0 +1,1 @@
+"""From a study file to evidence: scenes, trials, statistics, tables and figures."""

@@ -1,0 +1,1 @@
+"""Evidence: plans, summaries and comparisons of trials."""

@@ -1,0 +1,1 @@
+"""Scenes: truth and scans of detections, drawn or recorded."""

@@ -1,0 +1,1 @@
+"""Trials: tasks, the store of results, and the driver that runs them."""
