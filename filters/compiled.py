@@ -2,10 +2,10 @@
 
 Three decorators, so that compiler options, caching and error handling are decided in one place:
 
-`helper`           compiled into whatever calls it; takes sizes as arguments so that constants reach it
-`kernel`           an entry point called from Python; cached on disk
-`model_function`   a function with a fixed signature that kernels call through a pointer, so that one
-                   compiled kernel serves every sensor and motion, a user's own too
+`helper`          compiled into whatever calls it; takes sizes as arguments, so constants reach it
+`kernel`          an entry point called from Python; cached on disk
+`model_function`  a function of a fixed signature that kernels call through a pointer, so that one
+                  compiled kernel serves every sensor and motion, a user's own too
 
 `NUMBA_DISABLE_JIT=1` gives plain Python everywhere (for coverage and debugging).
 """
@@ -24,24 +24,27 @@ from typing import Any, TypeVar
 import llvmlite
 import numba
 import numpy as np
-from numba.core import caching, config
+from numba.core import caching
+from numba.core import config as numba_config
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
+config: Any = numba_config  # its switches are made at run time
 COMPILING = not config.DISABLE_JIT
 # Kernels allocate nothing: their callers hand them all room. Without numba's counting of references
 # (_nrt=False), which is then of no use, they run twice as fast.
-_OPTIONS = {"error_model": "numpy", "nogil": True, "_nrt": False}
+_OPTIONS: dict[str, Any] = {"error_model": "numpy", "nogil": True, "_nrt": False}
 _SOURCES = Path(__file__).resolve().parent.parent
 
 
 @functools.cache
-def source_digest(*folders: str) -> str:
-    """Digest of all Python sources in the named folders beside this package, e.g. "filters"."""
+def source_digest(*parts: str) -> str:
+    """Digest of the Python sources of the parts named: folders or files, e.g. "filters/models"."""
     digest = hashlib.sha256()
-    for folder in folders:
-        for path in sorted((_SOURCES / folder).rglob("*.py")):
-            digest.update(str(path.relative_to(_SOURCES)).encode())
+    for part in parts:
+        place = _SOURCES / part
+        for path in [place] if place.is_file() else sorted(place.rglob("*.py")):
+            digest.update(path.relative_to(_SOURCES).as_posix().encode())
             digest.update(path.read_bytes())
     return digest.hexdigest()
 
@@ -108,7 +111,7 @@ def kernel(function: Function) -> Function:
     return numba.njit(**_OPTIONS)(function)
 
 
-def compile_to_pointer(signature: object, function: Function) -> Function:
+def compile_to_pointer(signature: Any, function: Callable[..., Any]) -> Any:
     """Compile for calls through a pointer with a fixed signature, cached like a kernel."""
     if not COMPILING:
         return function
@@ -127,7 +130,7 @@ class ModelFunction:
     Compiling at import would cost 0.1 s a function, even for `--help`.
     """
 
-    def __init__(self, signature: object, function: Callable[..., Any]) -> None:
+    def __init__(self, signature: Any, function: Callable[..., Any]) -> None:
         self.signature = signature
         self.function = function
         functools.update_wrapper(self, function)
@@ -142,7 +145,7 @@ class ModelFunction:
         return compile_to_pointer(self.signature, self.function)
 
 
-def model_function(signature: object) -> Callable[[Callable[..., Any]], ModelFunction]:
+def model_function(signature: Any) -> Callable[[Callable[..., Any]], ModelFunction]:
     """Mark a function as a model function of the given signature."""
 
     def mark(function: Callable[..., Any]) -> ModelFunction:

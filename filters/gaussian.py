@@ -35,7 +35,7 @@ def predict_covariance(n: int, jacobian: Any, noise: Any, before: Any, work: Any
 def innovation_covariance(
     n: int, m: int, jacobian: Any, noise: Any, covariance: Any, cross: Any, out: Any
 ) -> None:
-    """Write the cross covariance P H' (n, m) and the innovation covariance S = H P H' + R (m, m)."""
+    """Write P H' (n, m) and the innovation covariance S = H P H' + R (m, m)."""
     for row in range(n):
         for column in range(m):
             value = 0.0
@@ -76,7 +76,7 @@ def condition_covariance(
     It stays positive definite where P - K S K' would lose its digits to cancellation, as when a
     precise measurement meets a vague prior. work (2, n, n).
 
-    source      Bucy and Joseph (1968), as given by Bar-Shalom, Li and Kirubarajan (2001), eq. 5.2.3-18
+    source      Bucy and Joseph (1968); Bar-Shalom, Li and Kirubarajan (2001), eq. 5.2.3-18
     """
     kept = work[0]  # I - K H
     moved = work[1]  # (I - K H) P

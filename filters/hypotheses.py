@@ -1,8 +1,8 @@
 """The table of hypotheses: one row for each way to explain a scan by one component of the prior.
 
 Row h says: the target was component `parent`, and detection `detection` was its own, or it was not
-detected (NOT_DETECTED). Its mean stands in row h of an array beside the table, its covariance in row
-`covariance` of another: detections of one parent usually share theirs.
+detected (NOT_DETECTED). Its mean stands in row h of an array beside the table, its covariance in
+row `covariance` of another: detections of one parent usually share theirs.
 """
 
 from __future__ import annotations
@@ -61,7 +61,7 @@ REDUCE = types.int64(_HYPOTHESES, types.int64, types.int64, VECTOR, _MIXTURE)
 
 @helper
 def normalise(table: Any, rows: int) -> None:
-    """Set weight = exp(log_weight) / sum, safe at any magnitude; at least one must be above -inf."""
+    """Set weight = exp(log_weight) / sum, safe at any magnitude; not all may be -inf."""
     heaviest = -math.inf
     for h in range(rows):
         heaviest = max(heaviest, table[h].log_weight)

@@ -1,7 +1,7 @@
 """Every Gaussian strategy: predict each component, form all hypotheses, reduce, and so on.
 
-Strategies differ in their reduction, the settings of it, and the gate. One kernel serves them all; it
-runs a whole batch of trials in one call.
+Strategies differ in their reduction, the settings of it, and the gate. One kernel serves them all
+and runs a whole batch of trials in one call.
 """
 
 from __future__ import annotations

@@ -1,4 +1,4 @@
-"""What a Gaussian says of the measurement: its expected value, spread, and the gain towards the state.
+"""What a Gaussian says of the measurement: its expected value and spread, and the gain.
 
 First order: the sensor's functions are taken at the mean and its Jacobian carries the covariance.
 """

@@ -1,4 +1,4 @@
-"""Gaussian mixtures as kernels hold them, and their moments, accumulated one component at a time."""
+"""Gaussian mixtures as kernels hold them; moments accumulated one component at a time."""
 
 from __future__ import annotations
 

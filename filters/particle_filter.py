@@ -4,8 +4,8 @@ Particles move by the motion model, and a scan weighs each by
 
     1 - PD(x) + sum over detections j of PD(x) g(z_j | x) / lambda(z_j)
 
-so no association is chosen and there is no gate. They are resampled systematically when the effective
-number of samples falls below a share of their count.
+so no association is chosen and there is no gate. They are resampled systematically when the
+effective number of samples falls below a share of their count.
 
 Source: Gordon, Salmond and Smith (1993), IEE Proceedings F 140; systematic resampling: Kitagawa
 (1996), Journal of Computational and Graphical Statistics 5.
@@ -249,7 +249,7 @@ def _weigh(
 
 @helper
 def _update(m: int, models: Models, scan: Scan, cloud: Cloud) -> bool:
-    """Weigh the particles by a scan; False if it is impossible under the model, and nothing done."""
+    """Weigh the particles by a scan; False, and nothing done, if the model makes it impossible."""
     near, without_clutter = _select_near(m, models, scan, cloud)
     total, least = _weigh(m, models, scan, near, without_clutter, 0.0, cloud)
     if not total > 0.0 and near > 0:

@@ -61,13 +61,14 @@ class Tracks(NamedTuple):
     impossible: np.ndarray  # (trials,) scans impossible under the model assumed
 
 
-def room_for_tracks(trials: int, scans: int, n: int) -> Tracks:
-    """Empty room: no estimate anywhere, NaN where nothing is written."""
+def room_for_tracks(scans: Scans, n: int) -> Tracks:
+    """Empty room for states of n numbers: no estimate anywhere, NaN where nothing is written."""
+    trials, length = scans.origins.shape
     return Tracks(
-        np.full((trials, scans, n), np.nan),
-        np.full((trials, scans, n, n), np.nan),
-        np.zeros((trials, scans), np.bool_),
-        np.full((trials, scans), np.nan),
+        np.full((trials, length, n), np.nan),
+        np.full((trials, length, n, n), np.nan),
+        np.zeros((trials, length), np.bool_),
+        np.full((trials, length), np.nan),
         np.zeros(trials, np.int64),
         np.zeros(trials, np.int64),
         np.zeros(trials, np.int64),

@@ -1,1 +1,1 @@
-"""Reductions: from the table of hypotheses to the smaller mixture that the next scan starts from."""
+"""Reductions: from the table of hypotheses to the mixture that the next scan starts from."""

@@ -1,11 +1,11 @@
 """Prune, merge greedily, cap: the reduction of a Gaussian mixture.
 
-Weights below a share of the total are dropped. Then, from the heaviest hypothesis i on, every j with
-(mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched. Then the
-heaviest groups are kept. Weights are rescaled after each step.
+Weights below a share of the total are dropped. Then, from the heaviest hypothesis i on, every j
+with (mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched.
+Then the heaviest groups are kept. Weights are rescaled after each step.
 
-Source: the clustering algorithm of Salmond (1990), SPIE 1305, Mixture reduction algorithms for target
-tracking in clutter, with the heaviest component's own covariance as the measure of distance.
+Source: the clustering algorithm of Salmond (1990), SPIE 1305, Mixture reduction algorithms for
+target tracking in clutter, with the heaviest component's own covariance as measure of distance.
 """
 
 from __future__ import annotations

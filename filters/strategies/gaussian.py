@@ -25,6 +25,7 @@ from filters.reductions.match_moments import match_moments
 from filters.reductions.prune_merge_cap import prune_merge_cap, reduction_settings
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
+from filters.update import Gate
 
 NO_SETTINGS = np.zeros(1)
 
@@ -38,9 +39,11 @@ def compiled_reduction(reduction: Callable[[int], Callable[..., int]], n: int) -
 class GaussianStrategy(Strategy):
     """A filter of Gaussian components; a kind names its reduction."""
 
-    gate_probability: GateProbability = 0.9997
-
     reduction: ClassVar[Callable[[int], Callable[..., int]]]
+
+    def gate(self, measurement_size: int) -> Gate:
+        """Which detections a component considers."""
+        raise NotImplementedError
 
     def capacity(self) -> int:
         """Most components that the reduction leaves."""
@@ -64,38 +67,48 @@ class GaussianStrategy(Strategy):
             compiled_reduction(type(self).reduction, n),
             self.reduction_settings(),
             self.capacity(),
-            gate_of(self.gate_probability, m),
+            self.gate(m),
             self.ends.rule(assumptions.axes),
             self.estimate_choice(),
         )
-        tracks = room_for_tracks(*scans.origins.shape, n)
+        tracks = room_for_tracks(scans, n)
         room = room_for(n, m, strategy.capacity, scans.most_detections)
         compiled_filter(n, m)(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
         return tracks
 
 
-class NearestNeighbour(GaussianStrategy):
+class GatedStrategy(GaussianStrategy):
+    """A Gaussian strategy that considers the detections in a gate."""
+
+    gate_probability: GateProbability = 0.9997
+
+    def gate(self, measurement_size: int) -> Gate:
+        """Which detections a component considers."""
+        return gate_of(self.gate_probability, measurement_size)
+
+
+class NearestNeighbour(GatedStrategy):
     """Takes the detection of least squared distance in the gate as certain."""
 
     kind: Literal["nearest-neighbour"]
     reduction: ClassVar = nearest
 
 
-class MostProbableHypothesis(GaussianStrategy):
+class MostProbableHypothesis(GatedStrategy):
     """Takes the heaviest of the M + 1 hypotheses as certain; it may choose 'not detected'."""
 
     kind: Literal["most-probable-hypothesis"]
     reduction: ClassVar = heaviest
 
 
-class ProbabilisticDataAssociation(GaussianStrategy):
+class ProbabilisticDataAssociation(GatedStrategy):
     """Matches the moments of all hypotheses by one Gaussian."""
 
     kind: Literal["pda"]
     reduction: ClassVar = match_moments
 
 
-class GaussianMixture(GaussianStrategy):
+class GaussianMixture(GatedStrategy):
     """Keeps several components: light ones pruned, close ones merged, the heaviest kept."""
 
     kind: Literal["gaussian-mixture"]
@@ -124,4 +137,7 @@ class KnownAssociation(GaussianStrategy):
     kind: Literal["known-association"]
     reduction: ClassVar = true_origin
     is_told_origins: ClassVar[bool] = True
-    gate_probability: Literal[1.0] = 1.0
+
+    def gate(self, measurement_size: int) -> Gate:
+        """No gate: the association is known."""
+        return gate_of(1.0, measurement_size)

@@ -37,7 +37,7 @@ class ParticleFilter(Strategy):
             gate_of(self.gate_probability, m),
             self.ends.rule(assumptions.axes),
         )
-        tracks = room_for_tracks(*scans.origins.shape, n)
+        tracks = room_for_tracks(scans, n)
         compiled_particle_filter(n, m)(
             assumptions.models,
             settings,

@@ -64,7 +64,7 @@ class Strategy(Record):
 
 
 def gate_of(probability: float, measurement_size: int) -> Gate:
-    """Gate of a probability PG: the chi-square quantile for measurements of that size; 1 is none."""
+    """Gate of a probability PG, the chi-square quantile for that size; 1 is no gate."""
     if probability >= 1.0:
         return Gate(1.0, math.inf)
     return Gate(probability, float(chi2.ppf(probability, measurement_size)))

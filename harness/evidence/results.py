@@ -17,9 +17,10 @@ class Results:
 
     summary     one row a case, the columns of summary.csv
     scans       one row a case and scan: swept keys, strategy, scan (from 1), time_s, held (trials
-                that held track and have an estimate at the scan), rmse_position, rmse_velocity (over
-                those), nees (mean over those, not divided by the dimension), nees_low and nees_high
-                (95 % bounds of such a mean), dimension, lost (share of trials not failed lost so far)
+                that held track and have an estimate at the scan), rmse_position, rmse_velocity
+                (over those), nees (mean over those, not divided by the dimension), nees_low and
+                nees_high (95 % bounds of such a mean), dimension, lost (share of the trials not
+                failed that are lost so far)
     document    the study file as run
     """
 

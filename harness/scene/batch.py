@@ -1,4 +1,4 @@
-"""Truth and scans of a batch of trials, as separate records: strategies are handed the scans only."""
+"""Truth and scans of a batch of trials, as separate records: strategies get the scans only."""
 
 from __future__ import annotations
 

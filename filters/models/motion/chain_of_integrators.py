@@ -1,4 +1,4 @@
-"""Motion along independent axes: position, velocity and perhaps acceleration, each the next's integral.
+"""Motion along independent axes: position, velocity and perhaps acceleration, a chain of integrals.
 
 The state is grouped by order (all positions, all velocities, ...), so one axis's block of a matrix
 is spread over the whole with a stride of `axes`. parameters[0] is the number of axes.

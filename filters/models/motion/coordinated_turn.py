@@ -1,6 +1,6 @@
 """Coordinated turn in a plane with an unknown turn rate, the state's last entry.
 
-Over an interval the velocity turns by w = turn rate * interval and the position moves along the arc.
+Over an interval the velocity turns by w = turn rate * interval; the position moves along the arc.
 White-noise acceleration disturbs the velocity, a random walk the turn rate.
 
 Source: Bar-Shalom, Li and Kirubarajan (2001), section 11.7 (nearly coordinated turn, Cartesian

@@ -1,6 +1,7 @@
 """Nearly constant acceleration: white-noise jerk along each axis.
 
-Source: Bar-Shalom, Li and Kirubarajan (2001), section 6.2.3 (continuous Wiener process acceleration).
+Source: Bar-Shalom, Li and Kirubarajan (2001), section 6.2.3 (continuous Wiener process
+acceleration).
 """
 
 from __future__ import annotations

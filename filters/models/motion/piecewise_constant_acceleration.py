@@ -1,4 +1,4 @@
-"""Nearly constant velocity with an acceleration that is constant between scans and drawn anew at each.
+"""Nearly constant velocity with an acceleration held between scans and drawn anew at each.
 
 Source: Bar-Shalom, Li and Kirubarajan (2001), section 6.3.2 (discrete white-noise acceleration).
 """

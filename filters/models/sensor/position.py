@@ -90,6 +90,7 @@ class PositionSensor(Sensor):
         right = self.density_keys[self.axes - 1]
         if key != right:
             raise ValueError(
-                f"{key} does not fit a region_m of {self.axes} axes; use {right} or clutter_per_scan"
+                f"{key} does not fit a region_m of {self.axes} axes; "
+                f"use {right} or clutter_per_scan"
             )
         return self
