@@ -1,0 +1,170 @@
+"""The command line: arguments in, exit code out, no logic."""
+
+from __future__ import annotations
+
+import signal
+import sys
+import traceback
+from pathlib import Path
+from types import FrameType
+from typing import Annotated
+
+import click
+import typer
+
+DONE, WRONG_INPUT, BROKEN_OFF, OUR_FAULT, INTERRUPTED, TERMINATED = 0, 2, 4, 5, 130, 143
+_WHERE_TO_REPORT = "please report it with the lines above and the study file"
+
+app = typer.Typer(
+    help="Monte Carlo performance evaluation of single-target trackers in clutter.",
+    add_completion=True,
+    no_args_is_help=True,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+    context_settings={"help_option_names": ["-h", "--help"]},
+)
+
+StudyFile = Annotated[Path, typer.Argument(help="A study file.", metavar="STUDY")]
+Anything = Annotated[
+    Path, typer.Argument(help="A results folder, or a study that was run.", metavar="PATH")
+]
+
+
+@app.command()
+def check(
+    study: Annotated[
+        Path | None, typer.Argument(help="A study file.", metavar="STUDY", show_default=False)
+    ] = None,
+    schema: Annotated[
+        bool, typer.Option("--schema", help="Print the JSON Schema of study files instead.")
+    ] = False,
+) -> None:
+    """Say what a study would run, or what is wrong with it; runs no trials."""
+    from harness import api
+
+    if schema:
+        print(api.schema_text())
+        return
+    if study is None:
+        raise click.UsageError("name a study file, or ask for --schema")
+    print(api.check_study(study, tell=_tell))
+
+
+@app.command()
+def run(
+    study: StudyFile,
+    into: Annotated[
+        Path | None, typer.Option(help="Folder of the results [default: results/NAME].")
+    ] = None,
+    store: Annotated[
+        Path | None, typer.Option(help="Folder of the store [default: .store beside it].")
+    ] = None,
+    workers: Annotated[
+        int | None, typer.Option(min=1, help="Processes [default: one a core].")
+    ] = None,
+    figures: Annotated[bool, typer.Option(help="Draw figures too.")] = True,
+) -> None:
+    """Run what is missing of a study; write and show its comparison."""
+    from harness import api
+    from harness.report.progress import ProgressLine
+
+    line = ProgressLine()
+    try:
+        outcome = api.run_study(
+            study, into=into, store=store, workers=workers, watch=line, tell=_tell
+        )
+    finally:
+        line.close()
+    print(api.closing_words(outcome, with_figures=figures))
+    for one in outcome.set_aside:
+        _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
+    if outcome.set_aside:
+        _tell("the results lack these trials; run the study again to try them anew")
+        raise typer.Exit(BROKEN_OFF)
+
+
+@app.command()
+def show(
+    path: Anything,
+    metric: Annotated[
+        list[str] | None, typer.Option(help="A metric of summary.csv; may be repeated.")
+    ] = None,
+    rows: Annotated[
+        list[str] | None, typer.Option(help="A swept key, or strategy; may be repeated.")
+    ] = None,
+    columns: Annotated[
+        list[str] | None, typer.Option(help="A swept key, or strategy; may be repeated.")
+    ] = None,
+    form: Annotated[
+        str, typer.Option("--as", help="terminal, csv, markdown or latex.")
+    ] = "terminal",
+) -> None:
+    """Show tables of a run."""
+    from harness import api
+
+    print(api.tables(path, metric or [], rows or [], columns or [], form))
+
+
+@app.command()
+def draw(
+    path: Anything,
+    form: Annotated[
+        list[str] | None, typer.Option("--as", help="svg, pdf or png; may be repeated.")
+    ] = None,
+    metric: Annotated[
+        str | None, typer.Option(help="Draw this metric only, against the key named.")
+    ] = None,
+    against: Annotated[str | None, typer.Option(help="A swept key.")] = None,
+    into: Annotated[
+        Path | None, typer.Option(help="Folder of the figures [default: figures in the results].")
+    ] = None,
+) -> None:
+    """Draw figures of a run."""
+    from harness import api
+
+    for written in api.draw(path, form or ["svg"], metric, against, into):
+        print(written)
+
+
+def main() -> int:
+    """Run the command; every end has its exit code."""
+    signal.signal(signal.SIGTERM, _end_on_sigterm)
+    try:
+        result = app(standalone_mode=False)
+        return result if isinstance(result, int) else DONE
+    except click.ClickException as error:
+        error.show()
+        return WRONG_INPUT
+    except (KeyboardInterrupt, click.Abort):
+        _tell("stopped; what was finished is kept, and the same command goes on from there")
+        return INTERRUPTED
+    except SystemExit as end:
+        if end.code == TERMINATED:
+            _tell("ended; what was finished is kept, and the same command goes on from there")
+        return end.code if isinstance(end.code, int) else OUR_FAULT
+    except Exception as error:
+        return _code_of(error)
+
+
+def _code_of(error: Exception) -> int:
+    from harness.report.folder import ResultsError
+    from harness.study.mistakes import StudyError
+    from harness.trials.store import StoreError
+
+    if isinstance(error, (StudyError, ResultsError, StoreError)):
+        print(error, file=sys.stderr)
+        return WRONG_INPUT
+    if isinstance(error, OSError):
+        _tell(f"broken off: {error}; what was stored is kept, and the same command goes on")
+        return BROKEN_OFF
+    traceback.print_exc()
+    _tell(f"this is a fault of the tool itself; {_WHERE_TO_REPORT}")
+    return OUR_FAULT
+
+
+def _end_on_sigterm(signum: int, frame: FrameType | None) -> None:
+    raise SystemExit(TERMINATED)
+
+
+def _tell(words: str) -> None:
+    print(f"trackassay: {words}", file=sys.stderr)

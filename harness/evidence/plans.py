@@ -1,0 +1,91 @@
+"""Plans: which trials to run. A fixed number for every condition."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from harness.study.expand import Condition
+from harness.study.study import Study
+from harness.trials.driver import Settled
+from harness.trials.keys import case_key, rules_key, scene_key
+from harness.trials.score import ScoringRules
+from harness.trials.task import Span, Task, TaskCase, spans_of
+
+# Enough tasks a worker that the last ones end together, few enough that sending them costs nothing.
+_TASKS_PER_WORKER = 8
+_MOST_SPANS_PER_TASK = 20
+
+
+@dataclass(frozen=True)
+class KeyedCondition:
+    """A condition with the keys of its results, one a case."""
+
+    condition: Condition
+    rules: ScoringRules
+    cases: tuple[TaskCase, ...]
+
+    @property
+    def label(self) -> str:
+        """The condition in words, for messages."""
+        settings = [f"{key} = {value}" for key, value in self.condition.settings.items()]
+        return ", ".join(settings) or "the only condition"
+
+
+def keyed_conditions(study: Study) -> list[KeyedCondition]:
+    """Conditions of a study with the keys that their results have now."""
+    keyed = []
+    for condition in study.conditions:
+        rules = condition.rules
+        scoring = ScoringRules(rules.track_loss, rules.gospa, rules.first_scored_scan())
+        scenes, scored = scene_key(rules.scene, study.seed), rules_key(scoring)
+        cases = tuple(
+            TaskCase(case_key(scenes, case, scored), case.strategy, case.assumed)
+            for case in condition.cases
+        )
+        keyed.append(KeyedCondition(condition, scoring, cases))
+    return keyed
+
+
+@dataclass(frozen=True)
+class FixedCount:
+    """The same number of trials for every condition."""
+
+    conditions: Sequence[KeyedCondition]
+    seed: int
+    trials: int
+    workers: int
+
+    def next_tasks(self, settled: Settled) -> list[Task]:
+        """All that is missing, in one round."""
+        missing: list[tuple[KeyedCondition, tuple[TaskCase, ...], list[Span]]] = []
+        claimed: set[tuple[str, Span]] = set()  # conditions may share a case
+        for condition in self.conditions:
+            groups: dict[tuple[str, ...], tuple[tuple[TaskCase, ...], list[Span]]] = {}
+            for span in spans_of(self.trials):
+                cases = tuple(
+                    case
+                    for case in condition.cases
+                    if not settled(case.key, span) and (case.key, span) not in claimed
+                )
+                claimed |= {(case.key, span) for case in cases}
+                if cases:
+                    group = groups.setdefault(tuple(case.key for case in cases), (cases, []))
+                    group[1].append(span)
+            missing += [(condition, cases, spans) for cases, spans in groups.values()]
+        spans_in_all = sum(len(spans) for _, _, spans in missing)
+        length = math.ceil(spans_in_all / (_TASKS_PER_WORKER * self.workers))
+        length = max(1, min(length, _MOST_SPANS_PER_TASK))
+        return [
+            Task(
+                condition.condition.rules.scene,
+                condition.rules,
+                cases,
+                tuple(spans[start : start + length]),
+                self.seed,
+                condition.label,
+            )
+            for condition, cases, spans in missing
+            for start in range(0, len(spans), length)
+        ]

@@ -1,0 +1,136 @@
+"""Summaries: one row a case, and one row a case and scan."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+
+from harness.evidence.case_scores import CaseScores
+from metrics.consistency import chi_square_mean_bounds, nees_inside
+from metrics.gospa import mean_gospa
+from metrics.intervals import (
+    effective_sample_size,
+    mean_influence,
+    mean_interval,
+    root_mean_interval,
+    wilson_interval,
+)
+
+Row = dict[str, Any]
+
+
+def summary_row(case: CaseScores, measurement_size: int, counts_hypotheses: bool) -> Row:
+    """Metrics of a case, in the columns of summary.csv behind the swept keys and `strategy`.
+
+    Errors and NEES are over the trials that held track, in the scoring window; SI units.
+    """
+    scores, held, counted = case.scores, case.held, case.counted
+    dimension = 2 * case.axes
+    lost, judged = int(case.lost.sum()), int(counted.sum())
+    window_scans = len(scores.scan_estimates[case.window])
+    row: Row = {
+        "trials": case.trials,
+        "lost": lost,
+        "failed": int(scores.failed.sum()),
+        **_with_interval("track_loss_rate", _ratio(lost, judged), wilson_interval(lost, judged)),
+        **_root_mean("rmse_position", scores.position_square[held], scores.estimates[held]),
+        **_root_mean("rmse_velocity", scores.velocity_square[held], scores.estimates[held]),
+        **_anees(case, dimension),
+        **_gospa(case),
+        "nees_inside": _share_inside(case, dimension),
+        "rmse_position_all": _root_mean(
+            "all", scores.position_square[counted], scores.estimates[counted]
+        )["all"],
+        "effective_trials": effective_sample_size(
+            scores.position_square[held], scores.estimates[held]
+        ),
+        "no_estimate": 1.0 - _ratio(int(scores.estimates[counted].sum()), judged * window_scans),
+        "anis": _mean(scores.nis[counted]) / measurement_size,
+        "hypotheses_per_scan": _mean(scores.hypotheses[counted]) if counts_hypotheses else np.nan,
+        "us_per_scan": case.us_per_scan,
+        "outside": _ratio(int(scores.outside.sum()), case.trials * len(scores.scan_estimates)),
+        "impossible_scans": int(scores.impossible[counted].sum()),
+    }
+    return row
+
+
+def scan_rows(case: CaseScores, times: np.ndarray) -> Mapping[str, np.ndarray]:
+    """Metrics of a case scan by scan, over held trials; columns as `Results.scans` names them.
+
+    times   (scans,) s since the first scan
+    """
+    scores = case.scores
+    dimension = 2 * case.axes
+    count = scores.scan_estimates
+    low, high = chi_square_mean_bounds(dimension, count)
+    scans = np.arange(1, len(count) + 1)
+    lost = np.array([np.sum(case.lost & (scores.lost_at < scan)) for scan in scans])
+    judged = int(case.counted.sum())
+    return {
+        "scan": scans,
+        "time_s": times,
+        "held": count,
+        "rmse_position": np.sqrt(_per_count(scores.scan_position_square, count)),
+        "rmse_velocity": np.sqrt(_per_count(scores.scan_velocity_square, count)),
+        "nees": _per_count(scores.scan_nees, count),
+        "nees_low": low,
+        "nees_high": high,
+        "dimension": np.full(len(count), dimension),
+        "lost": lost / judged if judged else np.full(len(count), np.nan),
+    }
+
+
+def _with_interval(name: str, value: float, interval: tuple[Any, Any]) -> Row:
+    return {name: value, f"{name}_low": float(interval[0]), f"{name}_high": float(interval[1])}
+
+
+def _root_mean(name: str, squares: np.ndarray, weights: np.ndarray) -> Row:
+    mean, _ = mean_influence(squares, weights)
+    return _with_interval(name, float(np.sqrt(mean)), root_mean_interval(squares, 2, weights=weights))
+
+
+def _anees(case: CaseScores, dimension: int) -> Row:
+    values, weights = case.scores.nees[case.held], case.scores.estimates[case.held]
+    mean, _ = mean_influence(values, weights)
+    low, high = mean_interval(values, weights=weights)
+    return _with_interval("anees", mean / dimension, (low / dimension, high / dimension))
+
+
+def _gospa(case: CaseScores) -> Row:
+    counted, scores, order = case.counted, case.scores, case.order
+    mean = mean_gospa(
+        scores.gospa_localisation[counted],
+        scores.gospa_missed[counted],
+        scores.gospa_false[counted],
+        order,
+    )
+    return {
+        **_with_interval(
+            "gospa", mean.distance, root_mean_interval(case.gospa_power[counted], order)
+        ),
+        "gospa_localisation": mean.localisation,
+        "gospa_missed": mean.missed,
+        "gospa_false": mean.false,
+    }
+
+
+def _share_inside(case: CaseScores, dimension: int) -> float:
+    count = case.scores.scan_estimates[case.window]
+    mean = _per_count(case.scores.scan_nees[case.window], count)
+    return nees_inside(mean, count, dimension)
+
+
+def _per_count(sums: np.ndarray, count: np.ndarray) -> np.ndarray:
+    mean = np.full(len(count), np.nan)
+    np.divide(sums, count, out=mean, where=count > 0)
+    return mean
+
+
+def _ratio(part: int, whole: int) -> float:
+    return part / whole if whole else float("nan")
+
+
+def _mean(values: np.ndarray) -> float:
+    return mean_influence(values)[0]

@@ -1,0 +1,110 @@
+"""The results folder of a study: summary.csv, scans.parquet and a manifest that vouches for both."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+import uuid
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from harness.evidence.results import Results
+from harness.trials.files import write_text_whole, write_whole
+
+MANIFEST = "manifest.json"
+_SUMMARY = "summary.csv"
+_SCANS = "scans.parquet"
+_FORMAT = "trackassay results 1"
+
+
+class ResultsError(Exception):
+    """A results folder that can't be used; the message says why and what to do."""
+
+
+def claim_folder(folder: Path) -> None:
+    """Make sure that results can be written to a folder, before anything is run.
+
+    raises      ResultsError: it holds something that is not ours, or can't be written
+    """
+    try:
+        if folder.exists() and not folder.is_dir():
+            raise ResultsError(f"{folder}: is a file; name a folder with --into")
+        if folder.is_dir() and any(folder.iterdir()) and not _is_ours(folder):
+            raise ResultsError(
+                f"{folder}: holds files but no {MANIFEST} of this tool, so nothing was written; "
+                "name another folder with --into"
+            )
+        folder.mkdir(parents=True, exist_ok=True)
+        probe = folder / f".probe-{uuid.uuid4().hex[:8]}"
+        probe.touch()
+        probe.unlink()
+    except OSError as error:
+        raise ResultsError(
+            f"{folder}: can't be written ({os.strerror(error.errno or 0)}); "
+            "name another folder with --into"
+        ) from error
+
+
+def write_results(results: Results, folder: Path) -> None:
+    """Write the results; each file is complete or as it was, and the manifest comes last.
+
+    raises      OSError: the disk is full, or the folder can't be written
+    """
+    write_text_whole(folder / _SUMMARY, results.summary.to_csv(index=False))
+    write_whole(folder / _SCANS, lambda beside: results.scans.to_parquet(beside, index=False))
+    files = {name: _digest(folder / name) for name in (_SUMMARY, _SCANS)}
+    manifest = {**results.manifest, "files": files}
+    write_text_whole(folder / MANIFEST, json.dumps(manifest, indent=1, default=str) + "\n")
+
+
+def load_results(folder: Path) -> Results:
+    """Read a results folder.
+
+    raises      ResultsError: it is none, or a file in it is missing or damaged
+    """
+    manifest = _read_manifest(folder)
+    for name, digest in manifest["files"].items():
+        if not (folder / name).is_file():
+            raise ResultsError(f"{folder / name}: missing; run the study again to restore it")
+        if _digest(folder / name) != digest:
+            raise ResultsError(
+                f"{folder / name}: not as it was written (its digest differs from the manifest's); "
+                "run the study again to restore it"
+            )
+    summary = pd.read_csv(folder / _SUMMARY, keep_default_na=True, dtype={"best_in": str})
+    summary["best_in"] = summary["best_in"].fillna("")
+    scans = pd.read_parquet(folder / _SCANS)
+    return Results(summary, scans, manifest["study"], manifest, folder)
+
+
+def _read_manifest(folder: Path) -> dict[str, Any]:
+    path = folder / MANIFEST
+    if not path.is_file():
+        raise ResultsError(
+            f"{folder}: no results there ({MANIFEST} is missing); run the study first"
+        )
+    try:
+        manifest = json.loads(path.read_text(encoding="utf-8"))
+        if manifest["format"] != _FORMAT:
+            raise ResultsError(f"{path}: its format is {manifest['format']!r}, not {_FORMAT!r}")
+        if not {"study", "files"} <= manifest.keys():
+            raise KeyError("study, files")
+    except (ValueError, KeyError, TypeError) as error:
+        raise ResultsError(
+            f"{path}: damaged ({error}); run the study again to restore it"
+        ) from error
+    return dict(manifest)
+
+
+def _is_ours(folder: Path) -> bool:
+    try:
+        return bool(_read_manifest(folder))
+    except ResultsError:
+        return False
+
+
+def _digest(path: Path) -> str:
+    return hashlib.sha256(path.read_bytes()).hexdigest()

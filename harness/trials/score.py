@@ -1,0 +1,151 @@
+"""Scores of one strategy on one span of trials: a row a trial, and sums over trials for each scan."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from filters.track import Tracks
+from harness.scene.batch import SceneBatch
+from harness.study.schema import Gospa, TrackLoss
+from metrics.consistency import nees
+from metrics.gospa import single_target_gospa
+from metrics.position_error import mean_squared_error, squared_error
+from metrics.present import mean_where_present
+from metrics.track_loss import loss_scan
+
+
+@dataclass(frozen=True)
+class ScoringRules:
+    """How trials are scored."""
+
+    track_loss: TrackLoss
+    gospa: Gospa
+    first_scan: int  # index of the first scan that counts
+
+
+@dataclass(frozen=True)
+class SpanScores:
+    """What is kept of a strategy's run over a span: trials are rows, scans are sums over them.
+
+    Means are over the scans of the scoring window with an estimate, and NaN where a trial has none;
+    NaN throughout for failed trials.
+    """
+
+    # (trials,)
+    lost_at: np.ndarray  # index of the scan at which the track was lost, -1 for held or failed
+    failed: np.ndarray  # bool
+    estimates: np.ndarray  # scans of the window with an estimate
+    position_square: np.ndarray  # m2, mean squared position error
+    velocity_square: np.ndarray  # m2/s2
+    nees: np.ndarray  # mean, not divided by the dimension
+    nis: np.ndarray  # mean over all scans where the true origin is known, NaN if it never is
+    gospa_localisation: np.ndarray  # m^p, mean over the window's scans
+    gospa_missed: np.ndarray
+    gospa_false: np.ndarray
+    hypotheses: np.ndarray  # mean number formed a scan while the track lasted
+    impossible: np.ndarray  # scans impossible under the model assumed
+    outside: np.ndarray  # scans with the target outside the sensor's region
+    # (scans,), over held trials with an estimate there
+    scan_estimates: np.ndarray
+    scan_position_square: np.ndarray
+    scan_velocity_square: np.ndarray
+    scan_nees: np.ndarray
+
+
+TRIAL_COLUMNS = tuple(SpanScores.__dataclass_fields__)[:13]
+SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[13:]
+
+
+def failed_trials(tracks: Tracks) -> np.ndarray:
+    """Trials with an estimate that is not finite or a covariance not positive definite, (trials,)."""
+    bad = ~np.isfinite(tracks.means).all(axis=-1)
+    finite = np.isfinite(tracks.covariances).all(axis=(-2, -1))
+    checked = np.where(finite[..., None, None], tracks.covariances, np.eye(tracks.means.shape[-1]))
+    bad |= ~finite | ~_positive_definite(checked)
+    return np.any(bad & tracks.present, axis=1)
+
+
+def _positive_definite(covariances: np.ndarray) -> np.ndarray:
+    try:
+        np.linalg.cholesky(covariances)
+    except np.linalg.LinAlgError:
+        return np.linalg.eigvalsh(covariances)[..., 0] > 0.0
+    return np.ones(covariances.shape[:-2], np.bool_)
+
+
+def loss_limit(rules: TrackLoss, reference: Tracks | None, axes: int) -> np.ndarray:
+    """Position error above which a scan counts as bad, m: a number, or (trials, scans).
+
+    reference   known association's tracks, for a limit in its standard deviations
+    """
+    if rules.error_above_m is not None:
+        return np.asarray(rules.error_above_m)
+    assert reference is not None and rules.error_above_sigma is not None
+    variances = np.diagonal(reference.covariances[..., :axes, :axes], axis1=-2, axis2=-1)
+    limit = rules.error_above_sigma * np.sqrt(variances.sum(axis=-1))
+    return np.where(reference.present, limit, np.inf)
+
+
+def score_span(
+    batch: SceneBatch, tracks: Tracks, reference: Tracks | None, rules: ScoringRules
+) -> SpanScores:
+    """Compare a strategy's tracks with the truth.
+
+    reference   known association's tracks of the same scenes, where the rules need them
+    """
+    truth, axes = batch.truth, batch.truth.axes
+    failed = failed_trials(tracks)
+    present = tracks.present & ~failed[:, None]
+    position, velocity = tracks.means[..., :axes], tracks.means[..., axes : 2 * axes]
+
+    position_square = squared_error(truth.position, position, present)
+    velocity_square = squared_error(truth.velocity, velocity, present)
+    position_error = np.sqrt(position_square)
+    lost_at = loss_scan(
+        position_error, present, loss_limit(rules.track_loss, reference, axes),
+        rules.track_loss.for_scans,
+    )  # fmt: skip
+    lost_at[failed] = -1
+
+    error = np.concatenate([truth.position - position, truth.velocity - velocity], axis=-1)
+    error[~present] = np.nan
+    spread = tracks.covariances[..., : 2 * axes, : 2 * axes]
+    spread = np.where(present[..., None, None], spread, np.nan)
+    consistency = nees(error, spread)
+
+    window = slice(rules.first_scan, None)
+    seen = present[:, window]
+    parts = single_target_gospa(
+        position_error[:, window], seen, rules.gospa.cutoff_m, rules.gospa.order
+    )
+    localisation, missed, false = (
+        np.where(failed, np.nan, part.mean(axis=1)) for part in parts
+    )
+
+    held = present & (lost_at < 0)[:, None]
+    known = np.isfinite(tracks.own_distance)
+
+    def held_sum(values: np.ndarray) -> np.ndarray:
+        return np.sum(values, axis=0, where=held)
+
+    return SpanScores(
+        lost_at=lost_at,
+        failed=failed,
+        estimates=seen.sum(axis=1),
+        position_square=mean_squared_error(position_square[:, window], seen),
+        velocity_square=mean_squared_error(velocity_square[:, window], seen),
+        nees=np.asarray(mean_where_present(consistency[:, window], seen, axis=1)),
+        nis=np.asarray(mean_where_present(tracks.own_distance, known, axis=1)),
+        gospa_localisation=localisation,
+        gospa_missed=missed,
+        gospa_false=false,
+        hypotheses=tracks.hypotheses / np.maximum(tracks.scans_run, 1),
+        impossible=tracks.impossible,
+        outside=truth.outside.sum(axis=1),
+        scan_estimates=held.sum(axis=0),
+        scan_position_square=held_sum(position_square),
+        scan_velocity_square=held_sum(velocity_square),
+        scan_nees=held_sum(consistency),
+    )

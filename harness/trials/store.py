@@ -1,0 +1,173 @@
+"""The store: scores of every case and span ever run, in files that are complete or absent.
+
+Only the driver writes. Each segment is a Parquet file with one row a case and span, whose columns
+hold lists: one value a trial, or one sum a scan. Segments are never changed, only added.
+"""
+
+from __future__ import annotations
+
+import time
+import uuid
+from collections.abc import Iterable, Iterator
+from contextlib import ExitStack, contextmanager
+from dataclasses import dataclass, field
+from pathlib import Path
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.parquet as pq
+from filelock import FileLock, Timeout
+
+from harness.trials.files import write_whole
+from harness.trials.score import SCAN_COLUMNS, TRIAL_COLUMNS, SpanScores
+from harness.trials.task import Span, SpanResult
+
+_INTEGERS = {"lost_at", "estimates", "impossible", "outside", "scan_estimates"}
+_FLAGS = {"failed"}
+
+
+def _list_type(column: str) -> pa.DataType:
+    if column in _INTEGERS:
+        return pa.list_(pa.int32())
+    return pa.list_(pa.bool_() if column in _FLAGS else pa.float64())
+
+
+_SCHEMA = pa.schema(
+    [
+        ("case", pa.string()),
+        ("span", pa.int32()),
+        ("trials", pa.int32()),
+        ("us_per_scan", pa.float64()),
+        *((column, _list_type(column)) for column in (*TRIAL_COLUMNS, *SCAN_COLUMNS)),
+    ],
+    metadata={"trackassay": "segment 1"},
+)
+
+SECONDS_BETWEEN_SEGMENTS = 2.0
+
+
+class StoreError(Exception):
+    """A store that can't be used; the message says why and what to do."""
+
+
+@dataclass
+class Store:
+    """An open store; `damaged` names the segments that can't be read, whose trials are run anew."""
+
+    folder: Path
+    damaged: list[Path] = field(default_factory=list)
+    _place_of: dict[tuple[str, Span], Path | None] = field(default_factory=dict)
+    _pending: list[SpanResult] = field(default_factory=list)  # their place is None
+    _last_written: float = field(default_factory=time.monotonic)
+
+    def __contains__(self, case_and_span: tuple[str, Span]) -> bool:
+        return case_and_span in self._place_of
+
+    def add(self, results: Iterable[SpanResult]) -> None:
+        """Keep results; they reach the disk within two seconds of further results, or at `flush`."""
+        for result in results:
+            self._pending.append(result)
+            self._place_of[result.key, result.span] = None
+        if time.monotonic() - self._last_written >= SECONDS_BETWEEN_SEGMENTS:
+            self.flush()
+
+    def flush(self) -> None:
+        """Write what is pending as one segment."""
+        self._last_written = time.monotonic()
+        if not self._pending:
+            return
+        table = pa.Table.from_pylist([_row(result) for result in self._pending], schema=_SCHEMA)
+        path = self.folder / f"segment-{time.time_ns():020d}-{uuid.uuid4().hex[:8]}.parquet"
+        write_whole(
+            path,
+            lambda beside: pq.write_table(
+                table, beside, compression="zstd", write_page_checksum=True
+            ),
+        )
+        self._place_of |= {(result.key, result.span): path for result in self._pending}
+        self._pending.clear()
+
+    def read(self, wanted: dict[str, list[Span]]) -> dict[str, list[SpanResult]]:
+        """Results of the cases and spans wanted, in the order of the spans; absent ones left out."""
+        self.flush()
+        asked = [(key, span) for key, spans in wanted.items() for span in spans]
+        places = {self._place_of[one] for one in asked if one in self._place_of}
+        found = {
+            (result.key, result.span): result
+            for place in sorted(place for place in places if place is not None)
+            for result in _results(place, list(wanted))
+        }
+        return {
+            key: [found[key, span] for span in spans if (key, span) in found]
+            for key, spans in wanted.items()
+        }
+
+    def look(self) -> None:
+        """See what the segments on disk hold; those that can't be read are named in `damaged`."""
+        for path in sorted(self.folder.glob("segment-*.parquet")):
+            try:
+                self._place_of |= dict.fromkeys(_contents(path), path)
+            except (OSError, pa.ArrowException):
+                self.damaged.append(path)
+
+
+@contextmanager
+def locked_store(folder: Path) -> Iterator[Store]:
+    """Open a store, made if absent, for one run at a time; a crash leaves no lock behind.
+
+    raises      StoreError: another run uses it, or the folder can't be made, read or written
+    """
+    with ExitStack() as stack:
+        try:
+            folder.mkdir(parents=True, exist_ok=True)
+            stack.enter_context(FileLock(folder / "lock", timeout=0))
+            store = Store(folder)
+            store.look()
+        except Timeout as error:
+            raise StoreError(
+                f"{folder}: another run is using this store; wait for it, or name another "
+                "with --store"
+            ) from error
+        except OSError as error:
+            raise StoreError(
+                f"{folder}: can't be used as a store ({error.strerror}); name another with --store"
+            ) from error
+        yield store
+
+
+def _row(result: SpanResult) -> dict[str, object]:
+    scores = result.scores
+    return {
+        "case": result.key,
+        "span": result.span.number,
+        "trials": result.span.trials,
+        "us_per_scan": result.us_per_scan,
+        **{column: getattr(scores, column) for column in (*TRIAL_COLUMNS, *SCAN_COLUMNS)},
+    }
+
+
+def _contents(path: Path) -> Iterator[tuple[str, Span]]:
+    """What a segment holds; reads it whole, so that damage anywhere in it shows now."""
+    table = pq.read_table(path, schema=_SCHEMA, page_checksum_verification=True)
+    columns = [table[name].to_pylist() for name in ("case", "span", "trials")]
+    for key, number, trials in zip(*columns, strict=True):
+        yield key, Span(number, trials)
+
+
+def _results(path: Path, keys: list[str]) -> Iterator[SpanResult]:
+    table = pq.read_table(
+        path,
+        schema=_SCHEMA,
+        filters=[("case", "in", keys)],
+        page_checksum_verification=True,
+    )
+    columns = {name: table[name] for name in _SCHEMA.names}
+    for i in range(table.num_rows):
+        scores = SpanScores(
+            **{
+                name: np.array(columns[name][i].values.to_numpy(zero_copy_only=False))
+                for name in (*TRIAL_COLUMNS, *SCAN_COLUMNS)
+            }
+        )
+        span = Span(columns["span"][i].as_py(), columns["trials"][i].as_py())
+        yield SpanResult(columns["case"][i].as_py(), span, scores, columns["us_per_scan"][i].as_py())

@@ -1,0 +1,135 @@
+"""A task: some spans of one condition's trials, for the strategies still missing there.
+
+A pure function: scenes are drawn once for all strategies, and the same task gives the same bits on
+any worker, alone or among others. Sums are formed over fixed spans of 100 trials.
+"""
+
+from __future__ import annotations
+
+import time
+import traceback
+from dataclasses import dataclass
+
+from filters.compiled import raising_what_compiled_code_raised
+from filters.random_numbers import Numbers, numbers_of
+from filters.strategies.gaussian import KnownAssociation
+from filters.strategies.strategy import Assumptions, Strategy
+from filters.track import Tracks
+from harness.scene.batch import SceneBatch
+from harness.scene.simulate import draw_scenes, models_of, prior_of
+from harness.study.schema import Scene
+from harness.trials.score import ScoringRules, SpanScores, score_span
+
+SPAN = 100
+
+
+@dataclass(frozen=True)
+class TaskCase:
+    """One strategy of a task, what it assumes, and the key of its results."""
+
+    key: str
+    strategy: Strategy
+    assumed: Scene
+
+
+@dataclass(frozen=True)
+class Span:
+    """Consecutive trials whose sums are kept together."""
+
+    number: int  # trials number * 100 and on
+    trials: int  # 100, or fewer in the last span
+
+    @property
+    def first_trial(self) -> int:
+        """Number of the first trial."""
+        return self.number * SPAN
+
+
+@dataclass(frozen=True)
+class Task:
+    """What a worker is sent."""
+
+    scene: Scene
+    rules: ScoringRules
+    cases: tuple[TaskCase, ...]
+    spans: tuple[Span, ...]
+    seed: int
+    label: str  # for people: which condition
+
+    @property
+    def trials(self) -> int:
+        """Number of scenes to draw."""
+        return sum(span.trials for span in self.spans)
+
+
+@dataclass(frozen=True)
+class SpanResult:
+    """One case's scores on one span."""
+
+    key: str
+    span: Span
+    scores: SpanScores
+    us_per_scan: float
+
+
+@dataclass(frozen=True)
+class TaskFailure:
+    """A task that broke off, with what it said."""
+
+    error: str
+    traceback: str
+
+
+def spans_of(trials: int) -> list[Span]:
+    """Spans of the first so many trials."""
+    starts = range(0, trials, SPAN)
+    return [Span(start // SPAN, min(SPAN, trials - start)) for start in starts]
+
+
+def run_task(task: Task) -> list[SpanResult]:
+    """Run every case of a task on every span.
+
+    raises      CompiledCodeError: a model function raised
+    """
+    numbers = numbers_of(task.seed)
+    results = []
+    with raising_what_compiled_code_raised():
+        for span in task.spans:
+            batch = draw_scenes(task.scene, numbers, span.first_trial, span.trials)
+            reference = _reference(task, batch, numbers)
+            for case in task.cases:
+                tracks, us_per_scan = _run_case(case, batch, numbers)
+                scores = score_span(batch, tracks, reference, task.rules)
+                results.append(SpanResult(case.key, span, scores, us_per_scan))
+    return results
+
+
+def run_task_safely(task: Task) -> list[SpanResult] | TaskFailure:
+    """Run a task; an exception becomes a record, so that it cannot stop other tasks."""
+    try:
+        return run_task(task)
+    except Exception as error:  # whatever it is, the driver tells it
+        return TaskFailure(f"{type(error).__name__}: {error}", traceback.format_exc())
+
+
+def _run_case(case: TaskCase, batch: SceneBatch, numbers: Numbers) -> tuple[Tracks, float]:
+    assumptions = assumptions_of(case.assumed)
+    is_told = type(case.strategy).is_told_origins
+    scans = batch.scans if is_told else batch.scans_without_origins
+    started = time.thread_time_ns()
+    tracks = case.strategy.run(assumptions, scans, numbers, batch.first_trial)
+    spent = time.thread_time_ns() - started
+    return tracks, spent / 1000 / scans.origins.size
+
+
+def assumptions_of(assumed: Scene) -> Assumptions:
+    """What a strategy is told, from the scene that it assumes."""
+    return Assumptions(models_of(assumed), prior_of(assumed), assumed.target.axes)
+
+
+def _reference(task: Task, batch: SceneBatch, numbers: Numbers) -> Tracks | None:
+    """Known association's tracks, where track loss is measured against them."""
+    if task.rules.track_loss.error_above_sigma is None:
+        return None
+    reference = TaskCase("", KnownAssociation(kind="known-association"), task.scene)
+    return _run_case(reference, batch, numbers)[0]

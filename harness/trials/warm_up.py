@@ -1,0 +1,59 @@
+"""Compile what a study needs, once and in the parent, before workers look for it in the cache."""
+
+from __future__ import annotations
+
+import threading
+from collections.abc import Callable, Iterable, Iterator
+from contextlib import contextmanager
+from dataclasses import replace
+
+from harness.study.schema import Scene
+from harness.trials.task import Span, Task, TaskCase, run_task
+
+_PATIENCE_S = 1.0
+
+
+def warm_up(tasks: Iterable[Task], tell: Callable[[], None]) -> None:
+    """Run a first trial of two scans for every combination of models and strategies.
+
+    tell    called once if this takes longer than loading compiled code would
+    """
+    seen = set()
+    with _after(_PATIENCE_S, tell):
+        for task in tasks:
+            for case in task.cases:
+                combination = (
+                    type(case.strategy),
+                    *_models(task.scene),
+                    *_models(case.assumed),
+                )
+                if combination not in seen:
+                    seen.add(combination)
+                    run_task(_shortest(task, case))
+
+
+def _models(scene: Scene) -> tuple[object, ...]:
+    return type(scene.target), scene.target.axes, type(scene.sensor)
+
+
+def _shortest(task: Task, case: TaskCase) -> Task:
+    scans = {"scans": 2}
+    short_case = replace(case, assumed=case.assumed.model_copy(update=scans))
+    return replace(
+        task,
+        scene=task.scene.model_copy(update=scans),
+        rules=replace(task.rules, first_scan=0),
+        cases=(short_case,),
+        spans=(Span(0, 1),),
+    )
+
+
+@contextmanager
+def _after(seconds: float, act: Callable[[], None]) -> Iterator[None]:
+    timer = threading.Timer(seconds, act)
+    timer.daemon = True
+    timer.start()
+    try:
+        yield
+    finally:
+        timer.cancel()
