@@ -30,7 +30,7 @@ _PUBLIC = {
     "all_figures": "harness.report.figures",
 }
 
-__all__ = list(_PUBLIC)  # noqa: PLE0605
+__all__ = list(_PUBLIC)
 
 
 class ShadowedPackageError(ImportError):

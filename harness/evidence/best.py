@@ -33,8 +33,14 @@ def best_in(cases: Cases) -> dict[str, list[str]]:
     fewest_lost = _not_told_apart(cases, _loss_rate, _loss_p_value)
     mark("track_loss_rate", fewest_lost)
     contenders = {name: cases[name] for name in fewest_lost}
-    mark("rmse_position", _not_told_apart(contenders, _rmse("position_square"), _p("position_square")))
-    mark("rmse_velocity", _not_told_apart(contenders, _rmse("velocity_square"), _p("velocity_square")))
+    mark(
+        "rmse_position",
+        _not_told_apart(contenders, _rmse("position_square"), _p("position_square")),
+    )
+    mark(
+        "rmse_velocity",
+        _not_told_apart(contenders, _rmse("velocity_square"), _p("velocity_square")),
+    )
     mark("anees", [name for name in contenders if _is_consistent(cases[name])])
     mark("gospa", _not_told_apart(cases, _gospa, _gospa_p_value))
     return found
@@ -100,9 +106,7 @@ def _gospa(case: CaseScores) -> float:
 
 def _gospa_p_value(first: CaseScores, second: CaseScores) -> float:
     both = first.counted & second.counted
-    return root_mean_ratio(
-        first.gospa_power[both], second.gospa_power[both], first.order
-    ).p_value
+    return root_mean_ratio(first.gospa_power[both], second.gospa_power[both], first.order).p_value
 
 
 def _is_consistent(case: CaseScores) -> bool:

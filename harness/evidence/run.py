@@ -120,7 +120,5 @@ def _manifest(
             for keyed in conditions
             for case, task in zip(keyed.condition.cases, keyed.cases, strict=True)
         ],
-        "set_aside": [
-            {"condition": one.task.label, "error": one.failure.error} for one in aside
-        ],
+        "set_aside": [{"condition": one.task.label, "error": one.failure.error} for one in aside],
     }

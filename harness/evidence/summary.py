@@ -88,7 +88,9 @@ def _with_interval(name: str, value: float, interval: tuple[Any, Any]) -> Row:
 
 def _root_mean(name: str, squares: np.ndarray, weights: np.ndarray) -> Row:
     mean, _ = mean_influence(squares, weights)
-    return _with_interval(name, float(np.sqrt(mean)), root_mean_interval(squares, 2, weights=weights))
+    return _with_interval(
+        name, float(np.sqrt(mean)), root_mean_interval(squares, 2, weights=weights)
+    )
 
 
 def _anees(case: CaseScores, dimension: int) -> Row:

@@ -1,4 +1,4 @@
-"""The results folder of a study: summary.csv, scans.parquet and a manifest that vouches for both."""
+"""The results folder of a study: summary.csv, scans.parquet, and a manifest to vouch for them."""
 
 from __future__ import annotations
 

@@ -64,9 +64,7 @@ def platform_words() -> tuple[str, ...]:
 
 def scene_key(scene: Scene, seed: int) -> str:
     """Key of a condition's scenes."""
-    return digest(
-        [scene.model_dump(), str(seed), platform_words(), source_digest(*_SCENE_SOURCES)]
-    )
+    return digest([scene.model_dump(), str(seed), platform_words(), source_digest(*_SCENE_SOURCES)])
 
 
 def rules_key(rules: ScoringRules) -> str:

@@ -1,4 +1,4 @@
-"""Scores of one strategy on one span of trials: a row a trial, and sums over trials for each scan."""
+"""Scores of a strategy on a span of trials: a row a trial, and sums over trials for each scan."""
 
 from __future__ import annotations
 
@@ -59,7 +59,7 @@ SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[13:]
 
 
 def failed_trials(tracks: Tracks) -> np.ndarray:
-    """Trials with an estimate that is not finite or a covariance not positive definite, (trials,)."""
+    """Trials with an estimate not finite or a covariance not positive definite, (trials,) bool."""
     bad = ~np.isfinite(tracks.means).all(axis=-1)
     finite = np.isfinite(tracks.covariances).all(axis=(-2, -1))
     checked = np.where(finite[..., None, None], tracks.covariances, np.eye(tracks.means.shape[-1]))
@@ -82,7 +82,8 @@ def loss_limit(rules: TrackLoss, reference: Tracks | None, axes: int) -> np.ndar
     """
     if rules.error_above_m is not None:
         return np.asarray(rules.error_above_m)
-    assert reference is not None and rules.error_above_sigma is not None
+    assert reference is not None
+    assert rules.error_above_sigma is not None
     variances = np.diagonal(reference.covariances[..., :axes, :axes], axis1=-2, axis2=-1)
     limit = rules.error_above_sigma * np.sqrt(variances.sum(axis=-1))
     return np.where(reference.present, limit, np.inf)
@@ -120,9 +121,7 @@ def score_span(
     parts = single_target_gospa(
         position_error[:, window], seen, rules.gospa.cutoff_m, rules.gospa.order
     )
-    localisation, missed, false = (
-        np.where(failed, np.nan, part.mean(axis=1)) for part in parts
-    )
+    localisation, missed, false = (np.where(failed, np.nan, part.mean(axis=1)) for part in parts)
 
     held = present & (lost_at < 0)[:, None]
     known = np.isfinite(tracks.own_distance)

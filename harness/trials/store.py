@@ -1,13 +1,15 @@
 """The store: scores of every case and span ever run, in files that are complete or absent.
 
 Only the driver writes. Each segment is a Parquet file with one row a case and span, whose columns
-hold lists: one value a trial, or one sum a scan. Segments are never changed, only added.
+hold lists: one value a trial, or one sum a scan. Segments are never changed, only added, and each
+has a digest of its content in its name.
 """
 
 from __future__ import annotations
 
+import hashlib
+import io
 import time
-import uuid
 from collections.abc import Iterable, Iterator
 from contextlib import ExitStack, contextmanager
 from dataclasses import dataclass, field
@@ -64,7 +66,7 @@ class Store:
         return case_and_span in self._place_of
 
     def add(self, results: Iterable[SpanResult]) -> None:
-        """Keep results; they reach the disk within two seconds of further results, or at `flush`."""
+        """Keep results; they reach the disk with the first that come two seconds after the last."""
         for result in results:
             self._pending.append(result)
             self._place_of[result.key, result.span] = None
@@ -77,18 +79,15 @@ class Store:
         if not self._pending:
             return
         table = pa.Table.from_pylist([_row(result) for result in self._pending], schema=_SCHEMA)
-        path = self.folder / f"segment-{time.time_ns():020d}-{uuid.uuid4().hex[:8]}.parquet"
-        write_whole(
-            path,
-            lambda beside: pq.write_table(
-                table, beside, compression="zstd", write_page_checksum=True
-            ),
-        )
+        content = io.BytesIO()
+        pq.write_table(table, content, compression="zstd")
+        path = self.folder / f"segment-{time.time_ns():020d}-{_digest(content.getvalue())}.parquet"
+        write_whole(path, lambda beside: beside.write_bytes(content.getvalue()))
         self._place_of |= {(result.key, result.span): path for result in self._pending}
         self._pending.clear()
 
     def read(self, wanted: dict[str, list[Span]]) -> dict[str, list[SpanResult]]:
-        """Results of the cases and spans wanted, in the order of the spans; absent ones left out."""
+        """Results of the cases and spans wanted, in the spans' order; absent ones are left out."""
         self.flush()
         asked = [(key, span) for key, spans in wanted.items() for span in spans]
         places = {self._place_of[one] for one in asked if one in self._place_of}
@@ -107,7 +106,7 @@ class Store:
         for path in sorted(self.folder.glob("segment-*.parquet")):
             try:
                 self._place_of |= dict.fromkeys(_contents(path), path)
-            except (OSError, pa.ArrowException):
+            except (OSError, ValueError, pa.ArrowException):
                 self.damaged.append(path)
 
 
@@ -146,21 +145,26 @@ def _row(result: SpanResult) -> dict[str, object]:
     }
 
 
+def _digest(content: bytes) -> str:
+    return hashlib.sha256(content).hexdigest()[:32]
+
+
 def _contents(path: Path) -> Iterator[tuple[str, Span]]:
-    """What a segment holds; reads it whole, so that damage anywhere in it shows now."""
-    table = pq.read_table(path, schema=_SCHEMA, page_checksum_verification=True)
-    columns = [table[name].to_pylist() for name in ("case", "span", "trials")]
+    """What a segment holds.
+
+    raises      ValueError: it is not as it was written, which the digest in its name tells
+    """
+    content = path.read_bytes()
+    if not path.stem.endswith(_digest(content)):
+        raise ValueError(f"{path} is damaged")
+    table = pq.read_table(io.BytesIO(content), columns=["case", "span", "trials"])
+    columns = [table[name].to_pylist() for name in table.column_names]
     for key, number, trials in zip(*columns, strict=True):
         yield key, Span(number, trials)
 
 
 def _results(path: Path, keys: list[str]) -> Iterator[SpanResult]:
-    table = pq.read_table(
-        path,
-        schema=_SCHEMA,
-        filters=[("case", "in", keys)],
-        page_checksum_verification=True,
-    )
+    table = pq.read_table(path, schema=_SCHEMA, filters=[("case", "in", keys)])
     columns = {name: table[name] for name in _SCHEMA.names}
     for i in range(table.num_rows):
         scores = SpanScores(
@@ -170,4 +174,6 @@ def _results(path: Path, keys: list[str]) -> Iterator[SpanResult]:
             }
         )
         span = Span(columns["span"][i].as_py(), columns["trials"][i].as_py())
-        yield SpanResult(columns["case"][i].as_py(), span, scores, columns["us_per_scan"][i].as_py())
+        yield SpanResult(
+            columns["case"][i].as_py(), span, scores, columns["us_per_scan"][i].as_py()
+        )

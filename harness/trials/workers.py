@@ -59,15 +59,15 @@ class LocalProcesses:
 
     @property
     def in_flight(self) -> int:
-        """Running, and handed out ahead."""
-        return 2 * self.count
+        """Running, and handed out ahead; one alone where workers were lost."""
+        return 2 * self.count if self.count > 1 else 1
 
     def run(self, tasks: Sequence[Task]) -> Iterator[Outcome]:
         """Run tasks as processes come free; stop early where a worker was lost."""
         parent = os.getpid()
         jobs = (delayed(_run_in_worker)(index, task, parent) for index, task in enumerate(tasks))
         parallel = Parallel(
-            n_jobs=self.count,
+            n_jobs=max(2, self.count),  # joblib takes 1 to mean this very process
             return_as="generator_unordered",
             batch_size=1,
             pre_dispatch=self.in_flight,
@@ -103,7 +103,7 @@ def _end_with_parent(
     pause: Callable[[float], None] = time.sleep,
     end: Callable[[int], None] = os._exit,
 ) -> None:
-    """End this process once its parent is gone, kill -9 included; kernels release the GIL for it."""
+    """End this process once its parent is gone, by kill -9 too; kernels release the GIL for it."""
     while os.getppid() == parent:
         pause(0.5)
     end(1)

@@ -1,0 +1,97 @@
+from __future__ import annotations
+
+from dataclasses import fields, replace
+
+import numpy as np
+import pytest
+
+from harness.study.schema import TrackLoss
+from harness.trials.task import Span, TaskFailure, run_task, run_task_safely, spans_of
+
+
+def assert_same_bits(first, second):
+    assert first.key == second.key
+    assert first.span == second.span
+    for field in fields(first.scores):
+        ours, theirs = getattr(first.scores, field.name), getattr(second.scores, field.name)
+        assert ours.tobytes() == theirs.tobytes(), field.name
+
+
+def test_trials_come_in_spans_of_a_hundred():
+    assert spans_of(250) == [Span(0, 100), Span(1, 100), Span(2, 50)]
+    assert [span.first_trial for span in spans_of(250)] == [0, 100, 200]
+
+
+def test_results_do_not_depend_on_how_spans_are_cut_into_tasks(make_task):
+    task = make_task(250)
+    whole = run_task(task)
+    parts = [one for span in task.spans for one in run_task(replace(task, spans=(span,)))]
+    for together, apart in zip(whole, parts, strict=True):
+        assert_same_bits(together, apart)
+
+
+def test_a_strategy_alone_gives_what_it_gives_among_others(make_task):
+    among = {result.key: result for result in run_task(make_task(100))}
+    for name in ("nearest", "pda", "known"):
+        (alone,) = run_task(make_task(100, [name]))
+        assert_same_bits(alone, among[name])
+
+
+def test_the_first_trials_of_a_longer_span_are_those_of_a_shorter_one(make_task):
+    (longer,) = run_task(make_task(100, ["pda"]))
+    (shorter,) = run_task(make_task(40, ["pda"]))
+    np.testing.assert_array_equal(
+        longer.scores.position_square[:40], shorter.scores.position_square
+    )
+
+
+def test_another_seed_gives_other_trials(make_task):
+    (first,), (second,) = (
+        run_task(make_task(50, ["pda"])),
+        run_task(make_task(50, ["pda"], seed=12)),
+    )
+    assert not np.any(first.scores.position_square == second.scores.position_square)
+
+
+def test_loss_relative_to_known_association_runs_it_though_the_study_does_not_list_it(make_task):
+    rules = replace(make_task().rules, track_loss=TrackLoss(error_above_sigma=1e-6, for_scans=2))
+    (result,) = run_task(make_task(30, ["pda"], rules=rules))
+    assert np.all(result.scores.lost_at == 0)
+
+
+def test_what_goes_wrong_in_a_task_is_a_record_not_an_exception(make_task):
+    task = replace(make_task(10), scene=None)
+    outcome = run_task_safely(task)
+    assert isinstance(outcome, TaskFailure)
+    assert "AttributeError" in outcome.error
+    assert "run_task" in outcome.traceback
+
+
+def test_no_strategy_reads_the_scene_except_through_what_it_assumes(make_task):
+    """Only the drawing of scenes may touch the scene's record: it is poisoned afterwards."""
+    task = make_task(20, ["nearest", "pda"])
+
+    class Poisoned:
+        def __init__(self, scene):
+            self.scene, self.used = scene, 0
+
+        def __getattr__(self, name):
+            return getattr(self.scene, name)
+
+    from harness.scene import simulate
+    from harness.trials import task as task_module
+
+    drawn = []
+
+    def draw(scene, numbers, first, trials):
+        batch = simulate.draw_scenes(scene.scene, numbers, first, trials)
+        drawn.append(batch)
+        scene.scene = None  # any later use raises
+        return batch
+
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(task_module, "draw_scenes", draw)
+        poisoned = run_task(replace(task, scene=Poisoned(task.scene)))
+    for ours, theirs in zip(poisoned, run_task(task), strict=True):
+        assert_same_bits(ours, theirs)
+    assert len(drawn) == 1
