@@ -1,0 +1,194 @@
+"""What results say, in sentences with numbers: titles of figures and the last line of tables."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+import pandas as pd
+
+from harness.evidence.results import Results
+from harness.report.numerals import short, with_interval, with_unit
+from harness.report.quantities import Quantity, metric_quantity
+from harness.report.swept import STRATEGY, SweptKey, plain, settings_of, strategy_key
+
+HELD_RATE = 0.95  # share of tracks held that findings speak of
+
+
+def candidates(results: Results) -> list[str]:
+    """Strategies with results that are not references."""
+    return [name for name in strategy_key(results).levels if name not in results.references]
+
+
+def best_counts(results: Results, metric: str) -> dict[str, int]:
+    """In how many conditions each candidate is not told apart from the best in a metric."""
+    return {
+        name: sum(is_best(names, metric) for names in _of(results, name)["best_in"])
+        for name in candidates(results)
+    }
+
+
+def is_best(names: object, metric: str) -> bool:
+    """Whether a metric is among the space-separated names of a case's `best_in`."""
+    return isinstance(names, str) and metric in names.split()
+
+
+def finding(results: Results, metric: str) -> str:
+    """One sentence, without its full stop, on a metric over all conditions of the results."""
+    quantity = metric_quantity(results, metric)
+    rivals = candidates(results) or list(strategy_key(results).levels)
+    rows = results.summary[results.summary[STRATEGY].isin(rivals)]
+    if rows[metric].isna().all():
+        why = "No trial held track" if quantity.held else "Nothing was counted"
+        return f"{why}: there is no {quantity.name}"
+    if metric == "track_loss_rate" and not rows["lost"].any():
+        return f"No strategy lost a track{_in_any_of(len(settings_of(results)))}"
+    if quantity.expected is not None:
+        return _calibration(results, metric, rivals)
+    counts = best_counts(results, metric)
+    if len(counts) > 1 and any(counts.values()):
+        return _ranking(results, metric, quantity, counts)
+    return _range(rows, metric, quantity)
+
+
+def finding_along(results: Results, swept: SweptKey) -> str:
+    """Up to which value of a swept quantity (or from which on) tracks are held.
+
+    The results are at one setting of all other swept keys.
+    """
+    reach = {name: _holding_levels(results, name, swept) for name in candidates(results)}
+    share = f"{HELD_RATE:.0%}".replace("%", " % of tracks")
+    if all(len(held) == len(swept.levels) for held in reach.values()):
+        return f"Every strategy holds {share} at every {swept.name} swept"
+    if not any(reach.values()):
+        return f"No strategy holds {share} at any {swept.name} swept"
+    leader = max(reach, key=lambda name: len(reach[name]))
+    last = min(reach, key=lambda name: len(reach[name]))
+    words = "up to" if reach[leader][0] == min(swept.levels) else "from"
+    text = f"{leader} holds {share} {words} {swept.described(reach[leader][-1])}"
+    if len(reach[last]) == len(reach[leader]):
+        return text
+    if not reach[last]:
+        return f"{text}, {last} nowhere"
+    return f"{text}, {last} {words} {with_unit(swept.label(reach[last][-1]), swept.unit)}"
+
+
+def trials_run(results: Results) -> str:
+    """How many trials a case has, and how that was decided."""
+    fewest, most = int(results.summary["trials"].min()), int(results.summary["trials"].max())
+    text = f"{fewest} trials a case" if fewest == most else f"{fewest} to {most} trials a case"
+    chosen_by = set(results.summary.get("trials_chosen_by", pd.Series(dtype=str)).dropna())
+    return text + (", chosen by precision" if "precision" in chosen_by else "")
+
+
+def listed(names: Sequence[str]) -> str:
+    """'a', 'a and b', 'a, b and c'."""
+    return " and ".join([", ".join(names[:-1]), names[-1]] if len(names) > 1 else names)
+
+
+def in_words(quantity: Quantity, value: float) -> str:
+    """A value of the summary in the quantity's unit."""
+    return with_unit(short(value * quantity.scale), quantity.unit)
+
+
+def _of(results: Results, strategy: str) -> pd.DataFrame:
+    return results.summary[results.summary[STRATEGY] == strategy]
+
+
+def _in_any_of(conditions: int) -> str:
+    return f" in any of the {conditions} conditions" if conditions > 1 else ""
+
+
+def _ranking(results: Results, metric: str, quantity: Quantity, counts: dict[str, int]) -> str:
+    """Who is best how often, and what that means beside who is best least often."""
+    conditions = len(settings_of(results))
+    if all(count == conditions for count in counts.values()):
+        return f"No two strategies are told apart yet in {quantity.name}{_in_any_of(conditions)}"
+    if conditions == 1:
+        return _best_of_one(results, metric, quantity, counts)
+    most = max(counts.values())
+    leaders = [name for name, count in counts.items() if count == most]
+    last = min(counts, key=lambda name: counts[name])
+    verb = "is" if len(leaders) == 1 else "are each"
+    return (
+        f"{listed(leaders)} {verb} best or not told apart from the best in {most} of {conditions} "
+        f"conditions; {_typical(results, metric, quantity, leaders[0])}, "
+        f"{last} {_typical_value(results, metric, quantity, last)}"
+    )
+
+
+def _best_of_one(results: Results, metric: str, quantity: Quantity, counts: dict[str, int]) -> str:
+    leaders = [name for name, count in counts.items() if count]
+    values = []
+    for name in leaders:
+        case = _of(results, name).to_dict("records")[0]
+        ends = (metric, f"{metric}_low", f"{metric}_high")
+        value, low, high = (quantity.scale * float(case[name]) for name in ends)
+        values.append(with_interval(value, low, high, quantity.unit))
+    if len(leaders) == 1:
+        return f"{leaders[0]} is best in {quantity.name}: {values[0]}"
+    return f"{listed(leaders)} are best in {quantity.name} and not told apart: {listed(values)}"
+
+
+def _typical(results: Results, metric: str, quantity: Quantity, name: str) -> str:
+    value = _typical_value(results, metric, quantity, name)
+    if metric == "track_loss_rate":
+        return f"{name} loses {value} of all tracks"
+    return f"median {quantity.name} {value} with {name}"
+
+
+def _typical_value(results: Results, metric: str, quantity: Quantity, name: str) -> str:
+    """Pooled rate of loss, or the median over the conditions."""
+    rows = _of(results, name)
+    if metric == "track_loss_rate":
+        trials = (rows["trials"] - rows["failed"]).sum()
+        return in_words(quantity, rows["lost"].sum() / trials if trials else math.nan)
+    return in_words(quantity, rows[metric].median())
+
+
+def _range(rows: pd.DataFrame, metric: str, quantity: Quantity) -> str:
+    cases = sorted(rows.dropna(subset=metric).to_dict("records"), key=lambda case: case[metric])
+    low, high = cases[0], cases[-1]
+    name = quantity.name[0].upper() + quantity.name[1:]
+    if low[metric] == high[metric]:
+        return f"{name} is {in_words(quantity, low[metric])}"
+    ends = [f"{in_words(quantity, end[metric])} ({end[STRATEGY]})" for end in (low, high)]
+    if low[STRATEGY] == high[STRATEGY]:
+        ends[0] = in_words(quantity, low[metric])
+    return f"{name} runs from {ends[0]} to {ends[1]}"
+
+
+def _calibration(results: Results, metric: str, rivals: Sequence[str]) -> str:
+    """Whose claimed errors are too small: the interval of ANEES lies above what is expected."""
+    conditions = len(settings_of(results))
+    counts = {name: over_confident(results, metric, name) for name in rivals}
+    guilty = sorted((name for name in rivals if counts[name]), key=lambda name: -counts[name])
+    if not guilty:
+        return f"No strategy is over-confident{_in_any_of(conditions)}"
+    if conditions == 1:
+        return f"Over-confident: {listed(guilty)}"
+    first, *others = guilty
+    parts = [f"{first} in {counts[first]} of {conditions} conditions"]
+    parts += [f"{name} in {counts[name]}" for name in others]
+    return f"Over-confident: {', '.join(parts)}"
+
+
+def over_confident(results: Results, metric: str, name: str) -> int:
+    """In how many conditions a strategy's interval lies wholly above the expected value."""
+    expected = metric_quantity(results, metric).expected
+    return int((_of(results, name)[f"{metric}_low"] > expected).sum())
+
+
+def _holding_levels(results: Results, name: str, swept: SweptKey) -> list[float]:
+    """Levels from the easier end on, as far as the strategy holds enough of the tracks."""
+    rates = {
+        plain(row[swept.key]): row["track_loss_rate"] for _, row in _of(results, name).iterrows()
+    }
+    overall = results.summary.groupby(swept.key)["track_loss_rate"].mean().sort_index()
+    hardest_last = overall.iloc[-1] >= overall.iloc[0]
+    held = []
+    for level in sorted(swept.levels, reverse=not hardest_last):
+        if not rates.get(level, math.nan) <= 1 - HELD_RATE:
+            break
+        held.append(level)
+    return held
