@@ -22,6 +22,11 @@ class Truth(NamedTuple):
         return self.states[..., : self.axes]
 
     @property
+    def kinematics(self) -> np.ndarray:
+        """Position and velocity, (trials, scans, 2 * axes)."""
+        return self.states[..., : 2 * self.axes]
+
+    @property
     def velocity(self) -> np.ndarray:
         """(trials, scans, axes) m/s."""
         return self.states[..., self.axes : 2 * self.axes]

@@ -9,7 +9,7 @@ import numpy as np
 from filters.track import Tracks
 from harness.scene.batch import SceneBatch
 from harness.study.schema import Gospa, TrackLoss
-from metrics.consistency import nees
+from metrics.consistency import nees, squared_mahalanobis
 from metrics.gospa import single_target_gospa
 from metrics.position_error import mean_squared_error, squared_error
 from metrics.present import mean_where_present
@@ -60,19 +60,19 @@ SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[13:]
 
 def failed_trials(tracks: Tracks) -> np.ndarray:
     """Trials with an estimate not finite or a covariance not positive definite, (trials,) bool."""
-    bad = ~np.isfinite(tracks.means).all(axis=-1)
-    finite = np.isfinite(tracks.covariances).all(axis=(-2, -1))
-    checked = np.where(finite[..., None, None], tracks.covariances, np.eye(tracks.means.shape[-1]))
-    bad |= ~finite | ~_positive_definite(checked)
-    return np.any(bad & tracks.present, axis=1)
-
-
-def _positive_definite(covariances: np.ndarray) -> np.ndarray:
     try:
-        np.linalg.cholesky(covariances)
-    except np.linalg.LinAlgError:
-        return np.linalg.eigvalsh(covariances)[..., 0] > 0.0
-    return np.ones(covariances.shape[:-2], np.bool_)
+        distance = squared_mahalanobis(tracks.means, tracks.covariances)
+        # An infinite variance leaves the distance finite.
+        sound = np.isfinite(distance + np.trace(tracks.covariances, axis1=-2, axis2=-1))
+    except ValueError:  # some covariance is not positive definite: look for it one by one
+        sound = _are_sound(tracks.means, tracks.covariances)
+    return np.any(~sound & tracks.present, axis=1)
+
+
+def _are_sound(means: np.ndarray, covariances: np.ndarray) -> np.ndarray:
+    finite = np.isfinite(means).all(axis=-1) & np.isfinite(covariances).all(axis=(-2, -1))
+    checked = np.where(finite[..., None, None], covariances, np.eye(means.shape[-1]))
+    return finite & (np.linalg.eigvalsh(checked)[..., 0] > 0.0)
 
 
 def loss_limit(rules: TrackLoss, reference: Tracks | None, axes: int) -> np.ndarray:
@@ -99,7 +99,12 @@ def score_span(
     truth, axes = batch.truth, batch.truth.axes
     failed = failed_trials(tracks)
     present = tracks.present & ~failed[:, None]
-    position, velocity = tracks.means[..., :axes], tracks.means[..., axes : 2 * axes]
+    estimate = tracks.means[..., : 2 * axes]  # NaN where there is none
+    spread = tracks.covariances[..., : 2 * axes, : 2 * axes]
+    if failed.any():
+        estimate = np.where(failed[:, None, None], np.nan, estimate)
+        spread = np.where(failed[:, None, None, None], np.nan, spread)
+    position, velocity = estimate[..., :axes], estimate[..., axes:]
 
     position_square = squared_error(truth.position, position, present)
     velocity_square = squared_error(truth.velocity, velocity, present)
@@ -110,11 +115,7 @@ def score_span(
     )  # fmt: skip
     lost_at[failed] = -1
 
-    error = np.concatenate([truth.position - position, truth.velocity - velocity], axis=-1)
-    error[~present] = np.nan
-    spread = tracks.covariances[..., : 2 * axes, : 2 * axes]
-    spread = np.where(present[..., None, None], spread, np.nan)
-    consistency = nees(error, spread)
+    consistency = nees(estimate - truth.kinematics, spread)
 
     window = slice(rules.first_scan, None)
     seen = present[:, window]
