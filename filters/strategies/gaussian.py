@@ -81,6 +81,7 @@ class GatedStrategy(GaussianStrategy):
     """A Gaussian strategy that considers the detections in a gate."""
 
     gate_probability: GateProbability = 0.9997
+    """Probability that the target's own detection lies in the gate, in (0, 1]; 1 is no gate."""
 
     def gate(self, measurement_size: int) -> Gate:
         """Which detections a component considers."""
@@ -91,6 +92,7 @@ class NearestNeighbour(GatedStrategy):
     """Takes the detection of least squared distance in the gate as certain."""
 
     kind: Literal["nearest-neighbour"]
+    """Which strategy: nearest neighbour."""
     reduction: ClassVar = nearest
 
 
@@ -98,6 +100,7 @@ class MostProbableHypothesis(GatedStrategy):
     """Takes the heaviest of the M + 1 hypotheses as certain; it may choose 'not detected'."""
 
     kind: Literal["most-probable-hypothesis"]
+    """Which strategy: most probable hypothesis."""
     reduction: ClassVar = heaviest
 
 
@@ -105,6 +108,7 @@ class ProbabilisticDataAssociation(GatedStrategy):
     """Matches the moments of all hypotheses by one Gaussian."""
 
     kind: Literal["pda"]
+    """Which strategy: probabilistic data association."""
     reduction: ClassVar = match_moments
 
 
@@ -112,10 +116,15 @@ class GaussianMixture(GatedStrategy):
     """Keeps several components: light ones pruned, close ones merged, the heaviest kept."""
 
     kind: Literal["gaussian-mixture"]
-    max_components: Count = 20
+    """Which strategy: Gaussian mixture."""
+    max_components: Annotated[Count, Field(le=10_000)] = 20
+    """Most components kept after each scan."""
     prune_below: Annotated[NonNegative, Field(lt=1.0)] = 1e-4
+    """Components of less weight than this share of the total are dropped."""
     merge_below: NonNegative = 0.5
+    """Components closer than this squared distance to a heavier one are merged with it."""
     estimate: Literal["mean", "heaviest"] = "mean"
+    """What is reported: mean and matched covariance, or the heaviest component."""
     reduction: ClassVar = prune_merge_cap
 
     def capacity(self) -> int:
@@ -135,6 +144,7 @@ class KnownAssociation(GaussianStrategy):
     """Is told which detection is the target's: a reference, possible only in simulation."""
 
     kind: Literal["known-association"]
+    """Which strategy: known association, a reference."""
     reduction: ClassVar = true_origin
     is_told_origins: ClassVar[bool] = True
 

@@ -12,16 +12,20 @@ from filters.strategies.strategy import Assumptions, GateProbability, Strategy, 
 from filters.track import Scans, Tracks, room_for_tracks
 
 ParticleCount = Annotated[int, Field(strict=True, ge=2, le=10_000_000)]
-Share = Annotated[float, Field(strict=True, ge=0.0, le=1.0)]
+Share = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0.0, le=1.0)]
 
 
 class ParticleFilter(Strategy):
     """A bootstrap particle filter with the association summed out of the likelihood."""
 
     kind: Literal["particle-filter"]
+    """Which strategy: particle filter."""
     particles: ParticleCount = 1000
-    resample_below: Share = 0.5  # effective number of samples, share of `particles`
-    gate_probability: GateProbability = 0.9997  # only for ending the track after empty scans
+    """Number of samples."""
+    resample_below: Share = 0.5
+    """Resample when the effective number of samples falls below this share of `particles`."""
+    gate_probability: GateProbability = 0.9997
+    """Only for ending the track after empty scans: the filter itself has no gate."""
 
     counts_hypotheses: ClassVar[bool] = False
 

@@ -14,7 +14,7 @@ from filters.random_numbers import Numbers
 from filters.track import Ending, Prior, Scans, Tracks
 from filters.update import Gate
 
-GateProbability = Annotated[float, Field(strict=True, gt=0.0, le=1.0)]
+GateProbability = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0.0, le=1.0)]
 
 
 class Assumptions(NamedTuple):
@@ -28,8 +28,10 @@ class Assumptions(NamedTuple):
 class TrackEnding(Record):
     """When a strategy gives its track up; from then on it has no estimate."""
 
-    empty_scans: Count | None = None  # in a row with nothing in the gate
-    position_sd_above_m: Positive | None = None  # of any axis
+    empty_scans: Count | None = None
+    """Give the track up after so many scans in a row with nothing in the gate."""
+    position_sd_above_m: Positive | None = None
+    """Give the track up when the position's standard deviation along an axis exceeds this, m."""
 
     def rule(self, axes: int) -> Ending:
         """The rule as kernels take it."""
@@ -44,8 +46,11 @@ class Strategy(Record):
     """Settings that all strategies share; a family adds its own and its `run`."""
 
     ends: TrackEnding = TrackEnding()
-    # What differs from the scene, mirroring it; resolved by who reads the study.
+    """When the track is given up; by default never."""
+    # Resolved by who reads the study.
     assumes: dict[str, Any] = Field(default_factory=dict)
+    """What the strategy is told of target and sensor where it differs from the scene: the same
+    keys, each with a value or with { factor = x } times the scene's own."""
 
     # Only a reference may be told which detection is the target's.
     is_told_origins: ClassVar[bool] = False

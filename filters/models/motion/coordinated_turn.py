@@ -19,7 +19,7 @@ from filters.compiled import helper, model_function
 from filters.models.contract import STATE_AFTER, STATE_MATRIX, MotionModel
 from filters.models.motion.chain_of_integrators import spread_block
 from filters.models.motion.target import Target
-from filters.models.record import NonNegative, Positive, Real
+from filters.models.record import BadValue, NonNegative, Positive, Real
 
 # Below this angle the closed forms lose digits to cancellation; their series do not.
 _SMALL_ANGLE = 1e-2
@@ -94,10 +94,15 @@ class CoordinatedTurn(Target):
     """A plane target that turns at a rate which is part of its state."""
 
     motion: Literal["coordinated-turn"]
+    """Which motion model: a turn rate that is part of the state."""
     acceleration_psd_m2_per_s3: NonNegative
+    """Power spectral density of the white-noise acceleration along each axis, m2/s3."""
     turn_rate_psd_deg2_per_s3: NonNegative
+    """Power spectral density of the white noise that drives the turn rate, deg2/s3."""
     start_turn_rate_deg_per_s: Real
+    """Mean of the turn rate at scan 1, counter-clockwise, deg/s."""
     start_turn_rate_sd_deg_per_s: Positive | None = None
+    """Standard deviation of the turn rate at scan 1, deg/s."""
 
     further_spreads: ClassVar[tuple[str, ...]] = ("start_turn_rate_sd_deg_per_s",)
 
@@ -123,8 +128,9 @@ class CoordinatedTurn(Target):
     @model_validator(mode="after")
     def _moves_in_a_plane(self) -> Self:
         if self.axes != 2:
-            raise ValueError(
-                f"coordinated-turn moves in a plane but start_position_m has {self.axes} entries; "
-                "give two, or choose another motion"
+            raise BadValue(
+                "start_position_m",
+                "must have two entries, as coordinated-turn moves in a plane",
+                "give two, or choose another motion",
             )
         return self

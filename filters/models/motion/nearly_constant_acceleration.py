@@ -42,9 +42,13 @@ class NearlyConstantAcceleration(Target):
     """Acceleration disturbed by white-noise jerk of a power spectral density."""
 
     motion: Literal["nearly-constant-acceleration"]
+    """Which motion model: acceleration disturbed by white-noise jerk."""
     jerk_psd_m2_per_s5: NonNegative
+    """Power spectral density of the white-noise jerk along each axis, m2/s5."""
     start_acceleration_m_per_s2: PerAxis = Field(min_length=1, max_length=3)
+    """Mean of the acceleration at scan 1 along each axis, m/s2."""
     start_acceleration_sd_m_per_s2: SpreadPerAxis | None = None
+    """Standard deviation of the acceleration at scan 1 along each axis, m/s2."""
 
     further_spreads: ClassVar[tuple[str, ...]] = ("start_acceleration_sd_m_per_s2",)
 

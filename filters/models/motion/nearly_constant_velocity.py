@@ -37,7 +37,9 @@ class NearlyConstantVelocity(Target):
     """Velocity disturbed by white-noise acceleration of a power spectral density."""
 
     motion: Literal["nearly-constant-velocity"]
+    """Which motion model: velocity disturbed by white-noise acceleration."""
     acceleration_psd_m2_per_s3: NonNegative
+    """Power spectral density of the white-noise acceleration along each axis, m2/s3."""
 
     def motion_model(self) -> MotionModel:
         """Functions and parameters for the kernels."""

@@ -36,7 +36,9 @@ class PiecewiseConstantAcceleration(Target):
     """Velocity disturbed by an independent acceleration held over each interval."""
 
     motion: Literal["piecewise-constant-acceleration"]
+    """Which motion model: an acceleration drawn anew at each scan and held until the next."""
     acceleration_sd_m_per_s2: NonNegative
+    """Standard deviation of the acceleration held over each interval, along each axis, m/s2."""
 
     def motion_model(self) -> MotionModel:
         """Functions and parameters for the kernels."""

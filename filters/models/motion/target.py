@@ -8,7 +8,7 @@ import numpy as np
 from pydantic import Field, model_validator
 
 from filters.models.contract import MotionModel
-from filters.models.record import Positive, Real, Record
+from filters.models.record import BadValue, Positive, Real, Record
 
 PerAxis = tuple[Real, ...]
 SpreadPerAxis = tuple[Positive, ...]
@@ -22,10 +22,16 @@ class Target(Record):
     """
 
     start_position_m: PerAxis = Field(min_length=1, max_length=3)
+    """Mean of the position at scan 1 along each axis, m."""
     start_velocity_m_per_s: PerAxis = Field(min_length=1, max_length=3)
+    """Mean of the velocity at scan 1 along each axis, m/s."""
     start_position_sd_m: SpreadPerAxis | None = None
+    """Standard deviation of the position at scan 1 along each axis, m."""
     start_velocity_sd_m_per_s: SpreadPerAxis | None = None
+    """Standard deviation of the velocity at scan 1 along each axis, m/s."""
     start_covariance: tuple[PerAxis, ...] | None = None
+    """Covariance of the state at scan 1, in place of all standard deviations: rows in the order
+    positions, velocities, then what the motion adds; in the units of the keys above."""
 
     # Keys of further standard deviations, in the order of the state behind the velocity.
     further_spreads: ClassVar[tuple[str, ...]] = ()
@@ -78,9 +84,10 @@ class Target(Record):
         for key, value in self:
             is_per_axis = isinstance(value, tuple) and key != "start_covariance"
             if is_per_axis and len(value) != axes:
-                raise ValueError(
-                    f"{key} has {len(value)} entries but start_position_m has {axes}; "
-                    "give one for each axis"
+                raise BadValue(
+                    key,
+                    f"must have as many entries as start_position_m, which has {axes}",
+                    "give one for each axis",
                 )
         return self
 
@@ -91,23 +98,44 @@ class Target(Record):
         if self.start_covariance is None:
             missing = [key for key in keys if key not in given]
             if missing:
-                raise ValueError(
-                    f"{', '.join(missing)} missing; give it, or start_covariance in its place"
+                raise BadValue(
+                    missing[0],
+                    "is missing",
+                    f"give {' and '.join(missing)}, or start_covariance in place of all spreads",
                 )
             return self
         if given:
-            raise ValueError(f"start_covariance and {given[0]} are both given; keep one of the two")
+            raise BadValue(
+                given[0], "says the same as start_covariance", "keep one of the two ways"
+            )
         _check_covariance(self.start_covariance, self.state_size)
         return self
 
 
 def _check_covariance(rows: tuple[PerAxis, ...], size: int) -> None:
     if len(rows) != size or any(len(row) != size for row in rows):
-        raise ValueError(
-            f"start_covariance must have {size} rows of {size} numbers, in the order of the state"
+        raise BadValue(
+            "start_covariance",
+            f"must have {size} rows of {size} numbers",
+            "order them as the state: positions, velocities, then what the motion adds",
         )
-    matrix = np.array(rows, float)
-    if not np.allclose(matrix, matrix.T, rtol=1e-9, atol=0.0):
-        raise ValueError("start_covariance must be symmetric")
-    if np.linalg.eigvalsh(matrix)[0] <= 0.0:
-        raise ValueError("start_covariance must be positive definite: an eigenvalue is not above 0")
+    if any(rows[i][i] <= 0.0 for i in range(size)):
+        raise BadValue(
+            "start_covariance",
+            "must be positive definite, but a number on its diagonal is not above 0",
+            "give variances above 0 there",
+        )
+    # As correlations, so that the tolerances mean the same for metres and for degrees per second.
+    spread = np.sqrt(np.diag(rows))
+    with np.errstate(over="ignore"):
+        correlation = np.array(rows, float) / spread / spread[:, np.newaxis]
+    if not np.allclose(correlation, correlation.T, rtol=0.0, atol=1e-9):
+        raise BadValue(
+            "start_covariance", "must be symmetric", "give the same number on both sides"
+        )
+    if np.abs(correlation).max() > 1.0 + 1e-9 or np.linalg.eigvalsh(correlation)[0] < 1e-12:
+        raise BadValue(
+            "start_covariance",
+            "must be positive definite",
+            "lessen the numbers beside the diagonal: a correlation reaches 1",
+        )

@@ -9,7 +9,7 @@ from pydantic import Field, model_validator
 
 from filters.compiled import model_function
 from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF, SensorModel
-from filters.models.record import Interval, NonNegative, Positive
+from filters.models.record import BadValue, Interval, NonNegative, Positive
 from filters.models.sensor.sensor import Sensor, check_ends
 
 
@@ -40,11 +40,17 @@ class PositionSensor(Sensor):
     """Cartesian position with the same independent noise along each axis."""
 
     kind: Literal["position"]
+    """Which sensor: Cartesian position along one to three axes."""
     noise_sd_m: Positive
+    """Standard deviation of the noise along each axis, m."""
     region_m: tuple[Interval, ...] = Field(min_length=1, max_length=3)
+    """Where detections are reported: lower and upper end along each axis, m."""
     clutter_density_per_m: NonNegative | None = None
+    """Expected false detections per scan and m, on one axis."""
     clutter_density_per_m2: NonNegative | None = None
+    """Expected false detections per scan and m2, on two axes."""
     clutter_density_per_m3: NonNegative | None = None
+    """Expected false detections per scan and m3, on three axes."""
 
     density_keys: ClassVar[tuple[str, ...]] = (
         "clutter_density_per_m",
@@ -89,8 +95,9 @@ class PositionSensor(Sensor):
         key, _ = self._given_density()
         right = self.density_keys[self.axes - 1]
         if key != right:
-            raise ValueError(
-                f"{key} does not fit a region_m of {self.axes} axes; "
-                f"use {right} or clutter_per_scan"
+            raise BadValue(
+                key,
+                f"does not fit the number of axes of region_m, which is {self.axes}",
+                f"give {right} or clutter_per_scan",
             )
         return self

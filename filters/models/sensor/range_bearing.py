@@ -13,7 +13,7 @@ from pydantic import model_validator
 
 from filters.compiled import model_function
 from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF, SensorModel
-from filters.models.record import Interval, NonNegative, Positive
+from filters.models.record import BadValue, Interval, NonNegative, Positive
 from filters.models.sensor.sensor import Sensor, check_ends
 
 
@@ -50,12 +50,19 @@ class RangeBearingSensor(Sensor):
     """Range and bearing from a fixed site, with independent noise."""
 
     kind: Literal["range-bearing"]
+    """Which sensor: range and bearing in a plane."""
     position_m: Interval = (0.0, 0.0)
+    """Where the sensor stands, m."""
     noise_sd_range_m: Positive
+    """Standard deviation of the noise of the range, m."""
     noise_sd_bearing_deg: Positive
+    """Standard deviation of the noise of the bearing, deg."""
     region_range_m: tuple[NonNegative, NonNegative]
+    """Shortest and longest range at which detections are reported, m."""
     region_bearing_deg: Interval = (-180.0, 180.0)
+    """Bearings between which detections are reported, counter-clockwise from the x axis, deg."""
     clutter_density_per_m_deg: NonNegative | None = None
+    """Expected false detections per scan, m of range and degree of bearing."""
 
     density_keys: ClassVar[tuple[str, ...]] = ("clutter_density_per_m_deg",)
 
@@ -92,7 +99,7 @@ class RangeBearingSensor(Sensor):
         check_ends("region_range_m", self.region_range_m, "m")
         check_ends("region_bearing_deg", self.region_bearing_deg, "degrees")
         if self.region_bearing_deg[1] - self.region_bearing_deg[0] > 360.0:
-            raise ValueError(
-                f"region_bearing_deg spans more than 360 degrees, got {self.region_bearing_deg}"
+            raise BadValue(
+                "region_bearing_deg", "must not span more than 360 degrees", "bring its ends closer"
             )
         return self

@@ -10,7 +10,7 @@ from pydantic import model_validator
 from filters.models.clutter.uniform import uniform_clutter
 from filters.models.contract import ClutterModel, DetectionModel, SensorModel
 from filters.models.detection.constant import constant_detection
-from filters.models.record import NonNegative, Probability, Record
+from filters.models.record import BadValue, NonNegative, Probability, Record
 
 
 class Sensor(Record):
@@ -21,7 +21,9 @@ class Sensor(Record):
     """
 
     detection_probability: Probability
+    """Probability that the target is detected at a scan, in [0, 1]."""
     clutter_per_scan: NonNegative | None = None
+    """Expected number of false detections in the region per scan, in place of a density."""
 
     # Keys of this kind that state a clutter density.
     density_keys: ClassVar[tuple[str, ...]] = ()
@@ -78,10 +80,11 @@ class Sensor(Record):
     def _clutter_is_stated_once(self) -> Self:
         keys = (*self.density_keys, "clutter_per_scan")
         given = [key for key in keys if getattr(self, key) is not None]
-        if len(given) != 1:
-            found = " and ".join(given) if given else "none of them"
-            raise ValueError(
-                f"clutter must be stated by exactly one of {', '.join(keys)}; found {found}"
+        if not given:
+            raise BadValue("clutter_per_scan", "is missing", f"give one of {', '.join(keys)}")
+        if len(given) > 1:
+            raise BadValue(
+                given[0], f"says the same as {' and '.join(given[1:])}", "keep one of them"
             )
         return self
 
@@ -89,7 +92,7 @@ class Sensor(Record):
 def check_ends(name: str, ends: tuple[float, float], unit: str) -> None:
     """Check that an interval has positive length.
 
-    raises      ValueError naming the interval
+    raises      BadValue naming the interval
     """
     if not ends[0] < ends[1]:
-        raise ValueError(f"{name} must run from a lower to a higher value in {unit}, got {ends}")
+        raise BadValue(name, f"must run from a lower to a higher value in {unit}", "swap its ends")

@@ -1,0 +1,1 @@
+"""Study files: what they may say, how they are read, and the conditions they make."""

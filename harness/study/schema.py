@@ -1,0 +1,192 @@
+"""What a study file may say; every record is frozen and checked once."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Annotated, Any, Literal, Self, Union
+
+import numpy as np
+from pydantic import Discriminator, Field, Tag, model_validator
+
+from filters.models.motion import MOTIONS
+from filters.models.motion.target import Target
+from filters.models.record import BadValue, Count, Positive, Record
+from filters.models.sensor import SENSORS
+from filters.models.sensor.sensor import Sensor
+from filters.strategies import STRATEGIES
+from filters.strategies.strategy import Strategy
+
+if TYPE_CHECKING:
+    AnyTarget = Target
+    AnySensor = Sensor
+    AnyStrategy = Strategy
+else:  # unions over whatever the catalogues hold
+    AnyTarget = Annotated[Union[MOTIONS], Field(discriminator="motion")]  # noqa: UP007
+    AnySensor = Annotated[Union[SENSORS], Field(discriminator="kind")]  # noqa: UP007
+    AnyStrategy = Annotated[Union[STRATEGIES], Field(discriminator="kind")]  # noqa: UP007
+
+Seed = Annotated[int, Field(strict=True, ge=0, lt=2**63)]
+Trials = Annotated[int, Field(strict=True, ge=1, le=100_000_000)]
+ScanCount = Annotated[int, Field(strict=True, ge=1, le=100_000)]
+Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
+Order = Annotated[float, Field(strict=True, ge=1.0, allow_inf_nan=False)]
+Text = Annotated[str, Field(strict=True)]
+# No dots and no quotes, so that a dotted key names one place.
+StrategyName = Annotated[str, Field(strict=True, pattern=r"^[A-Za-z0-9][A-Za-z0-9 _+-]{0,59}$")]
+
+
+class Scene(Record):
+    """Target, sensor and scans; a strategy's assumptions mirror it."""
+
+    scans: ScanCount
+    """Number of scans of a trial."""
+    scan_interval_s: Positive
+    """Time from one scan to the next, s."""
+    target: AnyTarget
+    """How the target starts and moves."""
+    sensor: AnySensor
+    """What is measured of the target, and the clutter."""
+
+    def scan_intervals(self) -> np.ndarray:
+        """Seconds before each scan, (scans,); the first is zero."""
+        intervals = np.full(self.scans, self.scan_interval_s)
+        intervals[0] = 0.0
+        return intervals
+
+    @model_validator(mode="after")
+    def _target_and_sensor_share_their_axes(self) -> Self:
+        target: Target = self.target
+        sensor: Sensor = self.sensor
+        if target.axes != sensor.axes:
+            raise BadValue(
+                "target.start_position_m",
+                f"has {target.axes} entries but the sensor works along {sensor.axes} axes",
+                "give the target and the sensor's region the same number",
+            )
+        return self
+
+
+class TrackLoss(Record):
+    """When a track counts as lost: position error above a limit for some scans in a row."""
+
+    error_above_m: Positive | None = None
+    """Limit of the position error, m."""
+    error_above_sigma: Positive | None = None
+    """Limit of the position error in known association's position spread, in place of metres."""
+    for_scans: Count
+    """So many scans in a row above the limit are a loss."""
+
+    @model_validator(mode="after")
+    def _one_limit(self) -> Self:
+        if self.error_above_m is None and self.error_above_sigma is None:
+            raise BadValue("error_above_m", "is missing", "give it or error_above_sigma")
+        if self.error_above_m is not None and self.error_above_sigma is not None:
+            raise BadValue(
+                "error_above_sigma", "stands beside error_above_m", "keep one of the two"
+            )
+        return self
+
+
+class Gospa(Record):
+    """Settings of the GOSPA metric (alpha = 2)."""
+
+    cutoff_m: Positive
+    """Largest position error that still counts as a localisation, m."""
+    order: Order = 2
+    """The power p of the errors, at least 1."""
+
+
+class Scoring(Record):
+    """Which scans count."""
+
+    from_scan: Count | None = None
+    """First scan of the scoring window, from 1; by default the one after the first tenth."""
+
+
+class Range(Record):
+    """Swept values from one end to the other."""
+
+    from_: Number = Field(alias="from")
+    """First value."""
+    to: Number
+    """Last value."""
+    count: Annotated[int, Field(strict=True, ge=2, le=10_000)]
+    """How many values, both ends counted."""
+    spacing: Literal["linear", "logarithmic"] = "linear"
+    """Equal differences or equal ratios."""
+
+    @model_validator(mode="after")
+    def _ends_differ(self) -> Self:
+        if self.from_ == self.to:
+            raise BadValue("to", "must differ from `from`", "give two ends, or a list of one value")
+        if self.spacing == "logarithmic" and not (self.from_ > 0 and self.to > 0):
+            raise BadValue("spacing", "needs ends above 0", "give such ends or linear spacing")
+        return self
+
+    def values(self) -> list[float]:
+        """The swept values; the ends are exact."""
+        space = np.geomspace if self.spacing == "logarithmic" else np.linspace
+        with np.errstate(all="ignore"):  # ends near the largest number; the values are checked
+            return [float(value) for value in space(self.from_, self.to, self.count)]
+
+
+def _values_or_range(swept: Any) -> str | None:
+    if isinstance(swept, list | tuple):
+        return "values"
+    return "range" if isinstance(swept, dict | Range) else None
+
+
+Swept = Annotated[
+    Annotated[list[Any], Field(min_length=1), Tag("values")] | Annotated[Range, Tag("range")],
+    Discriminator(_values_or_range),
+]
+Sweep = dict[str, Swept]
+SweepInStep = Annotated[Sweep, Field(min_length=1)]
+
+
+class Rules(Record):
+    """What a condition fixes: the scene, the strategies and how they are scored."""
+
+    scene: Scene
+    """Target, sensor and scans."""
+    strategies: Annotated[dict[StrategyName, AnyStrategy], Field(min_length=1)]
+    """Ways to follow the target; a table's name is the strategy's name in every output."""
+    track_loss: TrackLoss
+    """When a track counts as lost."""
+    gospa: Gospa
+    """Settings of the GOSPA metric."""
+    scoring: Scoring = Scoring()
+    """Which scans count."""
+
+    def first_scored_scan(self) -> int:
+        """Index of the first scan that counts, from 0."""
+        if self.scoring.from_scan is not None:
+            return self.scoring.from_scan - 1
+        return self.scene.scans // 10
+
+    @model_validator(mode="after")
+    def _some_scans_count(self) -> Self:
+        if self.first_scored_scan() >= self.scene.scans:
+            raise BadValue(
+                "scoring.from_scan",
+                f"must not exceed the {self.scene.scans} scans of the scene",
+                "give an earlier scan or more scans",
+            )
+        return self
+
+
+class StudyDocument(Rules):
+    """A whole study file."""
+
+    title: Annotated[Text, Field(min_length=1)]
+    """What the study is about, in a few words."""
+    question: Text = ""
+    """The question that the study shall answer."""
+    seed: Seed
+    """Start of all random numbers."""
+    trials: Trials
+    """Number of trials of each condition."""
+    sweep: Sweep = Field(default_factory=dict)
+    """A grid: each key a quoted dotted name such as "scene.sensor.detection_probability", with a
+    list of values or a range; every combination is a condition."""
+    sweep_together: list[SweepInStep] = Field(default_factory=list)
+    """Groups of keys that move in step: in a group all keys have equally many values."""
