@@ -35,8 +35,10 @@ from filters.update import HALF_LOG_TWO_PI, Gate, difference, log_or_minus_infin
 
 # exp(-x) is no longer a number above zero.
 _UNDERFLOW = 745.2
-# A term this much lighter, as a logarithm, than the sum it joins leaves no trace in its digits.
+# Terms that together are this much lighter, as a logarithm, than the sum they join leave no trace.
 _NO_TRACE = 38.0
+# Likelihoods between the bound and its reciprocal keep all their digits.
+_IN_RANGE = 1e-200
 
 
 class ParticleStrategy(NamedTuple):
@@ -176,53 +178,58 @@ def _prepare_noise(m: int, models: Models, scan: Scan, state: Any, cloud: Cloud)
 
 
 @helper
-def _select_near(m: int, models: Models, scan: Scan, cloud: Cloud) -> tuple[int, bool]:
+def _select_near(m: int, models: Models, scan: Scan, cloud: Cloud) -> tuple[int, float]:
     """List the detections that can leave a trace in any particle's likelihood.
 
-    With noise that varies from state to state, all within the range of numbers are listed.
-    returns     how many, and whether they lie where there is no clutter: those outweigh all else
+    Where there is no clutter a detection outweighs all else. With noise that varies from state to
+    state, or where the target can't be missed, all are listed.
+    returns     how many, and the greatest logarithm of the term for a missed target, 1 - PD
     """
     least_detected, most_detected = 1.0, 0.0
     for i in range(cloud.weights.shape[0]):
         least_detected = min(least_detected, cloud.detected[i])
         most_detected = max(most_detected, cloud.detected[i])
     peak = _prepare_noise(m, models, scan, cloud.states[0], cloud)
-    log_missed = log_or_minus_infinity(1.0 - most_detected)
+    leaves_trace = log_or_minus_infinity(1.0 - most_detected) - _NO_TRACE
 
     without_clutter = False
-    for j in range(scan.detections.shape[0]):
+    detections = scan.detections.shape[0]
+    for j in range(detections):
         clutter = models.clutter.intensity(models.clutter.parameters, scan.site, scan.detections[j])
         cloud.log_clutter[j] = log_or_minus_infinity(clutter)
         without_clutter = without_clutter or (clutter == 0.0 and most_detected > 0.0)
 
     count = 0
-    for j in range(scan.detections.shape[0]):
+    for j in range(detections):
         if without_clutter and cloud.log_clutter[j] > -math.inf:
             continue
         if without_clutter:
             cloud.log_clutter[j] = 0.0
-        elif models.sensor.same_noise and log_missed > -math.inf:
-            height = log_or_minus_infinity(most_detected) + peak - cloud.log_clutter[j]
+        elif models.sensor.same_noise and leaves_trace > -math.inf:
+            height = math.log(detections) + log_or_minus_infinity(most_detected) + peak
             bound = 0.5 * _squared_distance_to_box(m, models.sensor, scan.detections[j], cloud)
-            if height - bound < log_missed - _NO_TRACE:
+            if height - cloud.log_clutter[j] - bound < leaves_trace:
                 continue
         cloud.near[count] = j
         count += 1
-    return count, without_clutter
+    log_missed = -math.inf if without_clutter else log_or_minus_infinity(1.0 - least_detected)
+    return count, log_missed
 
 
 @helper
 def _weigh(
-    m: int, models: Models, scan: Scan, near: int, without_clutter: bool, shift: float, cloud: Cloud
+    m: int, models: Models, scan: Scan, near: int, log_missed: float, shift: float, cloud: Cloud
 ) -> tuple[float, float]:
     """Fill every particle's likelihood, times exp(shift), from the detections listed.
 
-    A shift above zero is for scans that no particle could have missed.
-    returns     sum of weight times likelihood, and the least half squared distance met
+    log_missed  as `_select_near` returns it
+    returns     sum of weight times likelihood, and the greatest logarithm of a detection's
+                g(z | x) / lambda(z) for a particle that has weight
     """
     sensor = models.sensor
     peak = _prepare_noise(m, models, scan, cloud.states[0], cloud)
-    total, least = 0.0, math.inf
+    scale = math.exp(shift) if log_missed > -math.inf else 0.0
+    total, highest = 0.0, -math.inf
     for i in range(cloud.weights.shape[0]):
         if not sensor.same_noise:
             peak = _prepare_noise(m, models, scan, cloud.states[i], cloud)
@@ -236,25 +243,25 @@ def _weigh(
             half = 0.5 * squared_distance(
                 m, cloud.noise_factor, cloud.differences[0], math.inf, cloud.differences[1]
             )
-            least = min(least, half)
-            exponent = peak - cloud.log_clutter[j] - half + shift
-            if exponent > -_UNDERFLOW:
-                found += math.exp(exponent)
-        missed = 0.0 if without_clutter or shift > 0.0 else 1.0 - detected
-        likelihood = missed + detected * found
+            exponent = peak - cloud.log_clutter[j] - half
+            if cloud.weights[i] > 0.0:
+                highest = max(highest, exponent)
+            if exponent + shift > -_UNDERFLOW:
+                found += math.exp(exponent + shift)
+        likelihood = (1.0 - detected) * scale + detected * found
         cloud.likelihoods[i] = likelihood
         total += cloud.weights[i] * likelihood
-    return total, least
+    return total, highest
 
 
 @helper
 def _update(m: int, models: Models, scan: Scan, cloud: Cloud) -> bool:
     """Weigh the particles by a scan; False, and nothing done, if the model makes it impossible."""
-    near, without_clutter = _select_near(m, models, scan, cloud)
-    total, least = _weigh(m, models, scan, near, without_clutter, 0.0, cloud)
-    if not total > 0.0 and near > 0:
-        # Every particle is too far away for a number above zero: bring the nearest into range.
-        total, _ = _weigh(m, models, scan, near, without_clutter, least, cloud)
+    near, log_missed = _select_near(m, models, scan, cloud)
+    total, highest = _weigh(m, models, scan, near, log_missed, 0.0, cloud)
+    if not _IN_RANGE < total < 1.0 / _IN_RANGE and near > 0:
+        # Too small or too large for the range of numbers: bring the greatest term to one.
+        total, _ = _weigh(m, models, scan, near, log_missed, -max(highest, log_missed), cloud)
     if not total > 0.0:
         return False
     for i in range(cloud.weights.shape[0]):
