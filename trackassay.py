@@ -19,14 +19,14 @@ from typing import Any
 _PACKAGES = ("harness", "filters", "metrics")
 _HERE = Path(__file__).resolve().parent
 _PUBLIC = {
-    "load_study": "harness.study.reader",
-    "study_from": "harness.study.reader",
+    "load_study": "harness.study.study",
+    "study_from": "harness.study.study",
     "study_json_schema": "harness.study.json_schema",
     "run_study": "harness.api",
     "find_results": "harness.api",
     "check_study": "harness.api",
     "load_results": "harness.report.folder",
-    "comparison_table": "harness.report.tables",
+    "comparison_table": "harness.report.tables.comparison",
     "all_figures": "harness.report.figures",
 }
 

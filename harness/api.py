@@ -2,16 +2,27 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import json
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
+from harness.evidence.outlook import look_ahead, outlook_text
 from harness.evidence.plans import FixedCount, keyed_conditions
 from harness.evidence.results import Results
 from harness.evidence.run import run_study as run_and_summarise
-from harness.report.folder import claim_folder, load_results, write_results
-from harness.study.reader import load_study
-from harness.study.study import Study
+from harness.report.figures import all_figures, figures_against, save_figure
+from harness.report.figures.default_set import main_key
+from harness.report.folder import ResultsError, claim_folder, load_results, write_results
+from harness.report.tables.comparison import DEFAULT_METRICS, comparison_table
+from harness.report.tables.csv_text import as_csv
+from harness.report.tables.latex import as_latex
+from harness.report.tables.markdown import as_markdown
+from harness.report.tables.overall import overall_table
+from harness.report.tables.table import Table
+from harness.report.tables.text import as_text
+from harness.study.json_schema import study_json_schema
+from harness.study.study import Study, load_study
 from harness.trials.driver import Progress, SetAside
 from harness.trials.store import locked_store
 from harness.trials.warm_up import warm_up
@@ -20,11 +31,24 @@ from harness.trials.workers import local_workers
 RESULTS = Path("results")
 
 
+class ChoiceError(Exception):
+    """A metric, key or form that does not exist; the message names those that do."""
+
+
+_FORMS: dict[str, Callable[[Table, int], str]] = {
+    "terminal": as_text,
+    "csv": lambda table, width: as_csv(table),
+    "markdown": lambda table, width: as_markdown(table),
+    "latex": lambda table, width: as_latex(table),
+}
+
+
 @dataclass(frozen=True)
 class RunOutcome:
     """What a run came to."""
 
     results: Results
+    folder: Path  # where the results were written
     set_aside: list[SetAside]  # tasks that failed three times, missing from the results
     damaged: list[Path]  # segments of the store that could not be read and were done again
 
@@ -60,10 +84,91 @@ def run_study(
         missing = plan.next_tasks(lambda key, span: (key, span) in opened)
         if not missing:
             tell("nothing to run: every trial is in the store")
-        warm_up(missing, lambda: tell("compiling for this machine, once; about half a minute"))
+        warm_up(missing, _telling(tell))
         results, aside = run_and_summarise(study, opened, processes, watch)
         write_results(results, folder)
-    return RunOutcome(replace(results, folder=folder), aside, opened.damaged)
+    return RunOutcome(replace(results, folder=folder), folder, aside, opened.damaged)
+
+
+def check_study(path: str | Path, tell: Callable[[str], None] = lambda words: None) -> str:
+    """What a study would run, in words, from a few scenes and no trials.
+
+    raises      StudyError: the study is wrong
+    """
+    study = load_study(path)
+    keyed = keyed_conditions(study)
+    warm_up(FixedCount(keyed, study.seed, 1, 1).next_tasks(lambda key, span: False), _telling(tell))
+    return outlook_text(look_ahead(study))
+
+
+def schema_text() -> str:
+    """JSON Schema of study files, for editors."""
+    return json.dumps(study_json_schema(), indent=2)
+
+
+def closing_words(outcome: RunOutcome, width: int = 100) -> str:
+    """What a run ends with: the comparison table, and the paths of what was written."""
+    written = sorted(path for path in outcome.folder.rglob("*") if path.is_file())
+    paths = "\n".join(f"  {path}" for path in written)
+    return f"{as_text(overall_table(outcome.results), width)}\n\nwritten:\n{paths}"
+
+
+def tables(
+    path: str | Path,
+    metrics: Sequence[str] = (),
+    rows: Sequence[str] = (),
+    columns: Sequence[str] = (),
+    form: str = "terminal",
+    width: int = 100,
+) -> str:
+    """Comparison tables of a run as text, one a metric.
+
+    raises      ResultsError, StudyError: no results there; ChoiceError: no such metric, key or form
+    """
+    results = find_results(path)
+    if form not in _FORMS:
+        raise ChoiceError(f"no form of table is called {form!r}; choose one of {', '.join(_FORMS)}")
+    try:
+        chosen = [
+            comparison_table(results, metric, rows, columns)
+            for metric in metrics or DEFAULT_METRICS
+        ]
+    except ValueError as error:
+        raise ChoiceError(str(error)) from error
+    return "\n\n".join(_FORMS[form](table, width) for table in chosen)
+
+
+def draw(
+    path: str | Path,
+    forms: Sequence[str] = ("svg",),
+    metric: str | None = None,
+    against: str | None = None,
+    into: str | Path | None = None,
+) -> list[Path]:
+    """Draw figures of a run; return the paths written.
+
+    metric, against     one metric against a swept key; without both, the usual set
+    into                default: the folder `figures` in the results
+    raises      ResultsError, StudyError: no results there; ChoiceError: no such metric, key or form
+    """
+    results = find_results(path)
+    folder = _folder_of(results) / "figures" if into is None else Path(into)
+    try:
+        if metric is None and against is None:
+            figures = all_figures(results)
+        else:
+            key = against or main_key(results)
+            if key is None:
+                raise ValueError("nothing is swept in this study; leave out --metric")
+            figures = figures_against(results, metric or DEFAULT_METRICS[0], key)
+        folder.mkdir(parents=True, exist_ok=True)
+        return [
+            path
+            for stem, figure in figures.items()
+            for path in save_figure(figure, folder / stem, forms)
+        ]
+    except ValueError as error:
+        raise ChoiceError(str(error)) from error
 
 
 def results_folder(study: Study, into: str | Path | None = None) -> Path:
@@ -80,3 +185,13 @@ def find_results(path: str | Path) -> Results:
     if path.is_dir() or path.suffix != ".toml":
         return load_results(path)
     return load_results(results_folder(load_study(path)))
+
+
+def _folder_of(results: Results) -> Path:
+    if results.folder is None:
+        raise ResultsError("these results were never written to a folder")
+    return results.folder
+
+
+def _telling(tell: Callable[[str], None]) -> Callable[[], None]:
+    return lambda: tell("compiling for this machine, once; it takes about half a minute")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import shutil
 import signal
 import sys
 import traceback
@@ -9,8 +10,8 @@ from pathlib import Path
 from types import FrameType
 from typing import Annotated
 
-import click
 import typer
+from typer.exceptions import TyperException
 
 DONE, WRONG_INPUT, BROKEN_OFF, OUR_FAULT, INTERRUPTED, TERMINATED = 0, 2, 4, 5, 130, 143
 _WHERE_TO_REPORT = "please report it with the lines above and the study file"
@@ -46,7 +47,7 @@ def check(
         print(api.schema_text())
         return
     if study is None:
-        raise click.UsageError("name a study file, or ask for --schema")
+        raise typer.BadParameter("name a study file, or ask for --schema")
     print(api.check_study(study, tell=_tell))
 
 
@@ -75,7 +76,9 @@ def run(
         )
     finally:
         line.close()
-    print(api.closing_words(outcome, with_figures=figures))
+    if figures:
+        api.draw(outcome.folder)
+    print(api.closing_words(outcome, _width()))
     for one in outcome.set_aside:
         _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
     if outcome.set_aside:
@@ -102,7 +105,7 @@ def show(
     """Show tables of a run."""
     from harness import api
 
-    print(api.tables(path, metric or [], rows or [], columns or [], form))
+    print(api.tables(path, metric or [], rows or [], columns or [], form, _width()))
 
 
 @app.command()
@@ -129,29 +132,34 @@ def draw(
 def main() -> int:
     """Run the command; every end has its exit code."""
     signal.signal(signal.SIGTERM, _end_on_sigterm)
+    code = _run_command()
+    if code in (INTERRUPTED, TERMINATED):
+        _tell("stopped; what was finished is kept, and the same command goes on from there")
+    return code
+
+
+def _run_command() -> int:
     try:
         result = app(standalone_mode=False)
-        return result if isinstance(result, int) else DONE
-    except click.ClickException as error:
-        error.show()
+    except TyperException as error:
+        error.show()  # type: ignore[attr-defined]
         return WRONG_INPUT
-    except (KeyboardInterrupt, click.Abort):
-        _tell("stopped; what was finished is kept, and the same command goes on from there")
+    except (KeyboardInterrupt, typer.Abort):
         return INTERRUPTED
     except SystemExit as end:
-        if end.code == TERMINATED:
-            _tell("ended; what was finished is kept, and the same command goes on from there")
         return end.code if isinstance(end.code, int) else OUR_FAULT
     except Exception as error:
         return _code_of(error)
+    return result if isinstance(result, int) else DONE
 
 
 def _code_of(error: Exception) -> int:
+    from harness.api import ChoiceError
     from harness.report.folder import ResultsError
     from harness.study.mistakes import StudyError
     from harness.trials.store import StoreError
 
-    if isinstance(error, (StudyError, ResultsError, StoreError)):
+    if isinstance(error, (StudyError, ResultsError, StoreError, ChoiceError)):
         print(error, file=sys.stderr)
         return WRONG_INPUT
     if isinstance(error, OSError):
@@ -160,6 +168,11 @@ def _code_of(error: Exception) -> int:
     traceback.print_exc()
     _tell(f"this is a fault of the tool itself; {_WHERE_TO_REPORT}")
     return OUR_FAULT
+
+
+def _width() -> int:
+    """Columns of the terminal, 100 at most; 80 where there is none."""
+    return min(100, shutil.get_terminal_size().columns) if sys.stdout.isatty() else 80
 
 
 def _end_on_sigterm(signum: int, frame: FrameType | None) -> None:

@@ -1,4 +1,7 @@
-"""Compile what a study needs, once and in the parent, before workers look for it in the cache."""
+"""Compile what a study needs: once and in the parent, before workers look for it in the cache.
+
+A worker does the same before its first task, so that loading is not taken for a strategy's cost.
+"""
 
 from __future__ import annotations
 
@@ -11,14 +14,14 @@ from harness.study.schema import Scene
 from harness.trials.task import Span, Task, TaskCase, run_task
 
 _PATIENCE_S = 1.0
+_warm: set[tuple[object, ...]] = set()  # combinations that this process has run
 
 
-def warm_up(tasks: Iterable[Task], tell: Callable[[], None]) -> None:
+def warm_up(tasks: Iterable[Task], tell: Callable[[], None] = lambda: None) -> None:
     """Run a first trial of two scans for every combination of models and strategies.
 
     tell    called once if this takes longer than loading compiled code would
     """
-    seen = set()
     with _after(_PATIENCE_S, tell):
         for task in tasks:
             for case in task.cases:
@@ -27,8 +30,8 @@ def warm_up(tasks: Iterable[Task], tell: Callable[[], None]) -> None:
                     *_models(task.scene),
                     *_models(case.assumed),
                 )
-                if combination not in seen:
-                    seen.add(combination)
+                if combination not in _warm:
+                    _warm.add(combination)
                     run_task(_shortest(task, case))
 
 

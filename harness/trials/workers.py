@@ -13,6 +13,7 @@ from joblib.externals.loky.process_executor import TerminatedWorkerError
 from threadpoolctl import threadpool_limits
 
 from harness.trials.task import SpanResult, Task, TaskFailure, run_task_safely
+from harness.trials.warm_up import warm_up
 
 Outcome = tuple[int, list[SpanResult] | TaskFailure]
 
@@ -95,6 +96,7 @@ def _run_in_worker(index: int, task: Task, parent: int) -> Outcome:
     if not _watching.is_set():
         _watching.set()
         threading.Thread(target=_end_with_parent, args=(parent,), daemon=True).start()
+    warm_up([task])
     return index, run_task_safely(task)
 
 
