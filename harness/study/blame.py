@@ -12,7 +12,7 @@ Combination = tuple[int, ...]  # a step along each of the axes
 
 
 def blamed(failures: Mapping[Combination, list[Finding]], axes: Sequence[Axis]) -> list[Finding]:
-    """Lay findings at the sweeps that cause them, each once.
+    """Lay findings at the sweeps that cause them, each once; without axes they stay where they are.
 
     A value is to blame if every combination with it fails at the same key; of several such values
     the one whose own key lies closest to the failing key. What then remains is due to combinations,
@@ -24,6 +24,8 @@ def blamed(failures: Mapping[Combination, list[Finding]], axes: Sequence[Axis]) 
     for steps, findings in failures.items():
         for finding in findings:
             by_key.setdefault(finding.path, {}).setdefault(steps, finding)
+    if not axes:
+        return [finding for findings in failures.values() for finding in findings]
     return [finding for path, failing in by_key.items() for finding in _causes(path, failing, axes)]
 
 
@@ -32,10 +34,7 @@ def _causes(
 ) -> list[Finding]:
     causes = []
     combinations = math.prod(len(axis.steps) for axis in axes)
-    nearest_first = sorted(
-        range(len(axes)),
-        key=lambda axis: -max(closeness(swept, path) for swept in axes[axis].keys),
-    )
+    nearest_first = sorted(range(len(axes)), key=lambda axis: -_closeness_of(axes[axis], path))
     for axis in nearest_first:
         with_step: dict[int, list[Combination]] = {}
         for steps in failing:
@@ -64,26 +63,38 @@ def laid_at(swept: SweptKey, step: int, value: object, finding: Finding) -> Find
 
 def _joint_cause(failing: Mapping[Combination, Finding], axes: Sequence[Axis]) -> Finding:
     steps, finding = next(iter(failing.items()))
-    sizes = [len(axis.steps) for axis in axes]
-    taking_part = [
-        axis
-        for axis in range(len(axes))
-        if any(
-            (*steps[:axis], other, *steps[axis + 1 :]) not in failing
-            for other in range(sizes[axis])
-        )
-    ]
-    (first, value), *others = [
-        _closest(axes[axis], steps[axis], finding.path) for axis in taking_part
-    ]
+    needed = _needed_axes(steps, failing, axes, finding.path)
+    (first, value), *others = [_closest(axes[axis], steps[axis], finding.path) for axis in needed]
     beside = " and ".join(f"{swept.key} = {value_text(given)}" for swept, given in others)
     rule = f"does not go with {beside}: {key_text(finding.path)} {finding.rule}"
-    return Finding(first.place_of(steps[taking_part[0]]), rule, finding.remedy, value, first.place)
+    return Finding(first.place_of(steps[needed[0]]), rule, finding.remedy, value, first.place)
+
+
+def _needed_axes(
+    steps: Combination,
+    failing: Mapping[Combination, Finding],
+    axes: Sequence[Axis],
+    path: KeyPath,
+) -> list[int]:
+    """Return axes whose steps alone make for failure, whatever the others; the closest first."""
+    needed = sorted(range(len(axes)), key=lambda axis: -_closeness_of(axes[axis], path))
+    for axis in reversed(needed.copy()):
+        fewer = [other for other in needed if other != axis]
+        alike = sum(all(other[place] == steps[place] for place in fewer) for other in failing)
+        if alike == math.prod(
+            len(axes[free].steps) for free in range(len(axes)) if free not in fewer
+        ):
+            needed = fewer
+    return needed
 
 
 def _closest(axis: Axis, step: int, path: KeyPath) -> tuple[SweptKey, object]:
     pairs = zip(axis.keys, axis.steps[step], strict=True)
     return max(pairs, key=lambda pair: closeness(pair[0], path))
+
+
+def _closeness_of(axis: Axis, path: KeyPath) -> int:
+    return max(closeness(swept, path) for swept in axis.keys)
 
 
 def closeness(swept: SweptKey, path: KeyPath) -> int:

@@ -155,7 +155,7 @@ class Rules(Record):
     gospa: Gospa
     """Settings of the GOSPA metric."""
     scoring: Scoring = Scoring()
-    """Which scans count."""
+    """Which scans count towards the metrics."""
 
     def first_scored_scan(self) -> int:
         """Index of the first scan that counts, from 0."""

@@ -237,10 +237,13 @@ def _unknown_change(path: tuple[str, ...], value: Any, document: dict[str, Any])
     key = ".".join(path)
     known = keys_of(document)
     is_new_strategy = len(path) == 2 and path[0] == "strategies" and isinstance(value, Mapping)
-    if key in known or is_new_strategy or path[0] in ("sweep", "sweep_together"):
+    is_of_sweeps = path[0] == "sweep" or path == ("sweep_together",)
+    if key in known or is_new_strategy or is_of_sweeps:
         return []
     alike = nearest(key, known)
     remedy = f"did you mean {alike}?" if alike else "name it as in scene.sensor.noise_sd_m"
+    if path[0] == "sweep_together":
+        remedy = 'change "sweep_together" as a whole'
     return [Finding(path, "is no key of the study", remedy, ABSENT if value is None else value)]
 
 

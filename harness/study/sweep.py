@@ -109,11 +109,10 @@ def with_first_values(
     filled, first_values = dict(document), []
     for swept in itertools.chain.from_iterable(groups):
         node = known.get(swept.key)
-        if isinstance(node, Leaf) and value_at(document, swept.path) is ABSENT:
-            first = _first_value(swept, node)
-            if first is not ABSENT:
-                filled = changed(filled, swept.path, first)
-                first_values.append((swept, first))
+        first = _first_value(swept, node) if _is_left_out(swept, document) else ABSENT
+        if isinstance(node, Leaf) and first is not ABSENT:
+            filled = changed(filled, swept.path, first)
+            first_values.append((swept, first))
     return filled, first_values
 
 
@@ -153,7 +152,15 @@ def _values(swept: SweptKey, node: Node | None) -> Sequence[Any]:
     return [_as_whole(value) for value in values] if _is_whole(node) else values
 
 
-def _first_value(swept: SweptKey, node: Node) -> Any:
+def _is_left_out(swept: SweptKey, document: Mapping[str, Any]) -> bool:
+    """Whether the key is absent, with no value where there should be the tables around it."""
+    path = swept.path
+    around = [value_at(document, path[:length]) for length in range(1, len(path))]
+    is_free = all(table is ABSENT or isinstance(table, Mapping) for table in around)
+    return is_free and value_at(document, path) is ABSENT
+
+
+def _first_value(swept: SweptKey, node: Node | None) -> Any:
     values = _values(swept, node)
     return values[0] if values and _is_scalar(values[0]) else ABSENT
 

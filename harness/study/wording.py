@@ -126,7 +126,7 @@ def _broken_limit(leaf: Leaf, given: float) -> str:
 
 
 def _limit(leaf: Leaf, closed: str, open_: str) -> tuple[Any, bool]:
-    """Return the tightest limit on one side and whether it is itself allowed, (None, False) if none."""
+    """Return the tightest limit on a side, None without one, and whether it is itself allowed."""
     limits = [
         (getattr(limit, name), name == closed)
         for limit in leaf.limits
