@@ -3,16 +3,19 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
+from typing import Any
 
 import pandas as pd
 
 from harness.evidence.results import Results
-from harness.report.numerals import short, with_interval, with_unit
+from harness.report.numerals import with_interval, with_unit, written
 from harness.report.quantities import Quantity, metric_quantity
 from harness.report.swept import STRATEGY, SweptKey, plain, settings_of, strategy_key
+from metrics.intervals import wilson_interval
 
 HELD_RATE = 0.95  # share of tracks held that findings speak of
+_MOST_LISTED = 3  # names in a list; more are counted
 
 
 def candidates(results: Results) -> list[str]:
@@ -70,7 +73,7 @@ def finding_along(results: Results, swept: SweptKey) -> str:
         return text
     if not reach[last]:
         return f"{text}, {last} nowhere"
-    return f"{text}, {last} {words} {with_unit(swept.label(reach[last][-1]), swept.unit)}"
+    return f"{text}, {last} {words} {swept.label(reach[last][-1])}"
 
 
 def trials_run(results: Results) -> str:
@@ -86,9 +89,23 @@ def listed(names: Sequence[str]) -> str:
     return " and ".join([", ".join(names[:-1]), names[-1]] if len(names) > 1 else names)
 
 
-def in_words(quantity: Quantity, value: float) -> str:
-    """A value of the summary in the quantity's unit."""
-    return with_unit(short(value * quantity.scale), quantity.unit)
+def case_in_words(quantity: Quantity, case: Mapping[Any, Any], metric: str) -> str:
+    """A case's value in the quantity's unit, with as many digits as its interval supports."""
+    return in_words(quantity, *(case.get(metric + end, math.nan) for end in ("", "_low", "_high")))
+
+
+def in_words(
+    quantity: Quantity, value: float, low: float = math.nan, high: float = math.nan
+) -> str:
+    """A value in the quantity's unit, with as many digits as its interval supports."""
+    text, _ = written(*(quantity.scale * float(x) for x in (value, low, high)))
+    return with_unit(text, quantity.unit)
+
+
+def closest_case(cases: pd.DataFrame, metric: str, value: float) -> dict[Any, Any]:
+    """The case whose value of a metric is closest to one; some case must have a value."""
+    known = cases.dropna(subset=metric).to_dict("records")
+    return min(known, key=lambda case: abs(case[metric] - value))
 
 
 def _of(results: Results, strategy: str) -> pd.DataFrame:
@@ -106,14 +123,22 @@ def _ranking(results: Results, metric: str, quantity: Quantity, counts: dict[str
         return f"No two strategies are told apart yet in {quantity.name}{_in_any_of(conditions)}"
     if conditions == 1:
         return _best_of_one(results, metric, quantity, counts)
-    most = max(counts.values())
-    leaders = [name for name, count in counts.items() if count == most]
-    last = min(counts, key=lambda name: counts[name])
-    verb = "is" if len(leaders) == 1 else "are each"
+    typical = {name: _typical(results, metric, name) for name in counts}
+    order = sorted(counts, key=lambda name: (-counts[name], typical[name][0]))
+    first, last, most = order[0], order[-1], counts[order[0]]
+    leaders = [name for name in counts if counts[name] == most]
+    if len(leaders) > _MOST_LISTED:
+        who = f"{len(leaders)} of {len(counts)} strategies are each"
+    else:
+        who = f"{listed(leaders)} {'is' if len(leaders) == 1 else 'are each'}"
+    value = in_words(quantity, *typical[first])
+    if metric == "track_loss_rate":
+        value = f"{first} loses {value} of all tracks"
+    else:
+        value = f"median {quantity.name} {value} with {first}"
     return (
-        f"{listed(leaders)} {verb} best or not told apart from the best in {most} of {conditions} "
-        f"conditions; {_typical(results, metric, quantity, leaders[0])}, "
-        f"{last} {_typical_value(results, metric, quantity, last)}"
+        f"{who} best or not told apart from the best in {most} of {conditions} conditions; "
+        f"{value} against {in_words(quantity, *typical[last])} with {last}"
     )
 
 
@@ -125,25 +150,29 @@ def _best_of_one(results: Results, metric: str, quantity: Quantity, counts: dict
         ends = (metric, f"{metric}_low", f"{metric}_high")
         value, low, high = (quantity.scale * float(case[name]) for name in ends)
         values.append(with_interval(value, low, high, quantity.unit))
+    if len(leaders) > _MOST_LISTED:
+        return (
+            f"{len(leaders)} of {len(counts)} strategies are best in {quantity.name} and not told "
+            f"apart; the first of them, {leaders[0]}: {values[0]}"
+        )
     if len(leaders) == 1:
         return f"{leaders[0]} is best in {quantity.name}: {values[0]}"
     return f"{listed(leaders)} are best in {quantity.name} and not told apart: {listed(values)}"
 
 
-def _typical(results: Results, metric: str, quantity: Quantity, name: str) -> str:
-    value = _typical_value(results, metric, quantity, name)
-    if metric == "track_loss_rate":
-        return f"{name} loses {value} of all tracks"
-    return f"median {quantity.name} {value} with {name}"
-
-
-def _typical_value(results: Results, metric: str, quantity: Quantity, name: str) -> str:
-    """Pooled rate of loss, or the median over the conditions."""
+def _typical(results: Results, metric: str, name: str) -> tuple[float, float, float]:
+    """Pooled rate of loss, or the median over the conditions; with an interval for its digits."""
     rows = _of(results, name)
     if metric == "track_loss_rate":
-        trials = (rows["trials"] - rows["failed"]).sum()
-        return in_words(quantity, rows["lost"].sum() / trials if trials else math.nan)
-    return in_words(quantity, rows[metric].median())
+        trials, lost = int((rows["trials"] - rows["failed"]).sum()), int(rows["lost"].sum())
+        ends = wilson_interval(lost, trials)
+        return lost / trials if trials else math.nan, float(ends.low), float(ends.high)
+    median = float(rows[metric].median())
+    if math.isnan(median):
+        return median, math.nan, math.nan
+    middle = closest_case(rows, metric, median)
+    low, high = (float(middle.get(metric + end, math.nan)) for end in ("_low", "_high"))
+    return median, low, high
 
 
 def _range(rows: pd.DataFrame, metric: str, quantity: Quantity) -> str:
@@ -151,10 +180,10 @@ def _range(rows: pd.DataFrame, metric: str, quantity: Quantity) -> str:
     low, high = cases[0], cases[-1]
     name = quantity.name[0].upper() + quantity.name[1:]
     if low[metric] == high[metric]:
-        return f"{name} is {in_words(quantity, low[metric])}"
-    ends = [f"{in_words(quantity, end[metric])} ({end[STRATEGY]})" for end in (low, high)]
+        return f"{name} is {case_in_words(quantity, low, metric)}"
+    ends = [f"{case_in_words(quantity, end, metric)} ({end[STRATEGY]})" for end in (low, high)]
     if low[STRATEGY] == high[STRATEGY]:
-        ends[0] = in_words(quantity, low[metric])
+        ends[0] = case_in_words(quantity, low, metric)
     return f"{name} runs from {ends[0]} to {ends[1]}"
 
 

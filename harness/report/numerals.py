@@ -65,10 +65,12 @@ def with_unit(text: str, unit: str) -> str:
 def distinct_labels(values: Sequence[float]) -> tuple[str, ...]:
     """Three significant figures, or as many more as it takes to tell the values apart.
 
-    Whole numbers below a million are written in full.
+    Whole numbers below a million are written in full; where one value needs a power of ten, all
+    are written with one.
     """
+    positional = all(x == 0 or 1e-3 <= abs(x) < 1e6 for x in values)
     for figures in range(SIGNIFICANT_FIGURES, 18):
-        labels = tuple(_label(float(value), figures) for value in values)
+        labels = tuple(_label(float(value), figures, positional) for value in values)
         if len(set(labels)) == len(set(values)):
             break
     return labels
@@ -90,6 +92,12 @@ def typeset_unit(unit: str) -> str:
     return re.sub(r"(?<=[a-z])\d", lambda digit: digit[0].translate(_SUPERSCRIPTS), unit)
 
 
+def typeset_sentence(text: str) -> str:
+    """A sentence as a figure shows it: '1e-5 per m2' as '10⁻⁵ per m²'."""
+    text = re.sub(r"(?<![\w.])\d(?:\.\d+)?e-?\d+\b", lambda number: typeset_number(number[0]), text)
+    return re.sub(r"\bper \w+", lambda unit: typeset_unit(unit[0]), text)
+
+
 def _exponent(x: float) -> int:
     """Power of ten of the first figure, after rounding to three."""
     return int(f"{x:.{SIGNIFICANT_FIGURES - 1}e}".partition("e")[2])
@@ -106,14 +114,13 @@ def _written(x: float, places: int, positional: bool) -> str:
     return _tidy(f"{x:.{figures}e}")
 
 
-def _label(x: float, figures: int) -> str:
-    if x.is_integer() and abs(x) < 1e6:
+def _label(x: float, figures: int, positional: bool) -> str:
+    if x == 0 or (positional and x.is_integer()):
         return str(int(x))
-    if 1e-3 <= abs(x) < 1e6:
+    if positional:
         return f"{float(f'{x:.{figures}g}'):.15f}".rstrip("0").rstrip(".")
     mantissa, _, exponent = f"{x:.{figures - 1}e}".partition("e")
-    mantissa = mantissa.rstrip("0").rstrip(".") if "." in mantissa else mantissa
-    return _tidy(f"{mantissa}e{exponent}")
+    return _tidy(f"{mantissa.rstrip('0').rstrip('.')}e{exponent}")
 
 
 def _tidy(text: str) -> str:

@@ -12,6 +12,7 @@ from harness.evidence.results import Results
 from harness.report.findings import (
     best_counts,
     candidates,
+    closest_case,
     finding,
     over_confident,
     trials_run,
@@ -125,8 +126,7 @@ def _closest(cases: pd.DataFrame, metric: str, value: float) -> Cell:
     """The case whose value is closest to one; an empty cell for NaN."""
     if math.isnan(value):
         return Cell(math.nan)
-    known = cases.dropna(subset=metric).to_dict("records")
-    case = min(known, key=lambda case: abs(case[metric] - value))
+    case = closest_case(cases, metric, value)
     return case_cell(case, metric, METRICS[metric], marking=False)
 
 

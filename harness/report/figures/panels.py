@@ -1,0 +1,90 @@
+"""Which panels a figure has, and what stands above and beside them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from typing import Any
+
+from harness.evidence.results import Results
+from harness.report.figures.lettering import NO_BREAK_SPACE
+from harness.report.figures.page import Grid
+from harness.report.numerals import typeset_number, typeset_unit, with_unit
+from harness.report.swept import SweptKey, described, settings_of, swept_keys
+
+MOST_PANELS = 12
+_MOST_ACROSS = 4
+# Inches, by the number of panels beside each other.
+PANEL_HEIGHT = {1: 2.7, 2: 1.9, 3: 1.4, 4: 1.15}
+
+
+def panel_keys(results: Results, drawn: str) -> list[str]:
+    """Swept keys that make panels when one is drawn along the x axis.
+
+    Left out are keys of one level, and keys that move in step with the one drawn.
+    """
+    keys = swept_keys(results)
+    return [
+        key
+        for key in keys
+        if key != drawn and len(keys[key].levels) > 1 and not _in_step(results, keys, key, drawn)
+    ]
+
+
+def in_step_with(results: Results, drawn: str) -> list[str]:
+    """Other swept keys whose values change exactly where those of one key do."""
+    keys = swept_keys(results)
+    return [key for key in keys if key != drawn and _in_step(results, keys, key, drawn)]
+
+
+def panel_grid(results: Results, keys: Sequence[str]) -> tuple[Grid, list[dict[str, Any]]]:
+    """The panels of some swept keys: what stands where, and the setting of each.
+
+    Two keys in full combination make rows and columns; anything else is laid out line by line.
+    """
+    swept = swept_keys(results)
+    settings = settings_of(results, keys) if keys else [{}]
+    levels = [swept[key].levels for key in keys]
+    if len(keys) == 2 and len(settings) == math.prod(map(len, levels)):
+        slow, fast = keys
+        if 1 < len(levels[1]) <= _MOST_ACROSS:
+            grid = Grid(
+                columns=len(levels[1]),
+                count=len(settings),
+                column_heads=[in_figure(swept[fast], level) for level in levels[1]],
+                row_heads=[in_figure(swept[slow], level) for level in levels[0]],
+            )
+            ordered = [{slow: row, fast: column} for row in levels[0] for column in levels[1]]
+            return grid, ordered
+    titles = [setting_in_figure(swept, setting) for setting in settings] if keys else []
+    return Grid(_columns_for(len(settings)), len(settings), titles=titles), settings
+
+
+def in_figure(key: SweptKey, level: Any) -> str:
+    """A level as a figure names it: 'clutter density 10⁻⁵ per m²'."""
+    label = typeset_number(key.label(level)) if key.numeric else key.label(level)
+    value = with_unit(label, typeset_unit(key.unit))
+    return f"{key.name} {value.replace(' ', NO_BREAK_SPACE)}"
+
+
+def setting_in_figure(keys: Mapping[str, SweptKey], setting: Mapping[str, Any]) -> str:
+    """A setting as a figure names it."""
+    return ", ".join(in_figure(keys[key], level) for key, level in setting.items())
+
+
+def setting_in_words(results: Results, setting: Mapping[str, Any]) -> str:
+    """A setting in plain text, for names of files and messages."""
+    return described(swept_keys(results), setting)
+
+
+def _columns_for(panels: int) -> int:
+    if panels <= 3:
+        return panels
+    if panels == 4:
+        return 2
+    return 3 if panels <= 9 else _MOST_ACROSS
+
+
+def _in_step(results: Results, keys: Mapping[str, SweptKey], first: str, second: str) -> bool:
+    pairs = len(settings_of(results, [first, second]))
+    return pairs == len(keys[first].levels) == len(keys[second].levels) > 1
