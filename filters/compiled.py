@@ -102,6 +102,8 @@ def helper(function: Function) -> Function:
 
 def kernel(function: Function) -> Function:
     """Compile an entry point, cached on disk where a place can be written, else in memory."""
+    if not COMPILING:  # compiled words wrap and 1 / 0 is infinite without a warning
+        return np.errstate(all="ignore")(function)
     with _cached_by_whole_source():
         try:
             return numba.njit(cache=True, **_OPTIONS)(function)
