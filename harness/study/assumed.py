@@ -13,7 +13,9 @@ from harness.study.keys import ASSUMABLE, FACTOR, Choice, Table, assumable_table
 from harness.study.mistakes import Finding, Findings, KeyPath, value_text
 from harness.study.names import nearest
 from harness.study.schema import Scene
-from harness.study.wording import findings_of, unknown_key, wrong_value
+from harness.study.unknown_keys import unknown_key
+from harness.study.wording import findings_of
+from harness.study.wrong_values import wrong_value
 
 _SCENE = Table(Scene)
 

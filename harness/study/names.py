@@ -16,19 +16,23 @@ def nearest(name: str, known: Iterable[str]) -> str | None:
     return alike[0] if alike else None
 
 
-def unit_of(key: str) -> str:
-    """Return the unit in which a key takes its value, in words; empty if it names none."""
-    match = _UNITS.match(key)
-    return match[2].replace("_", " ") if match else ""
-
-
 def in_another_unit(key: str, known: Iterable[str]) -> str | None:
     """Return the known key of the same quantity whose unit differs, None if there is none."""
-    stem = _stem(key)
-    same = [other for other in known if other != key and unit_of(other) and _stem(other) == stem]
+    stem, _ = _parts(key)
+    same = [
+        other for other in known if other != key and _parts(other)[0] == stem and unit_of(other)
+    ]
     return difflib.get_close_matches(key, same, n=1, cutoff=0.0)[0] if same else None
 
 
-def _stem(key: str) -> str:
+def unit_of(key: str) -> str:
+    """Return how a key takes its value, such as 'in m/s' or 'per m2'; empty if it has no unit."""
+    _, unit = _parts(key)
+    if unit.startswith("per_"):
+        return unit.replace("_", " ")
+    return f"in {unit.replace('_per_', '/').replace('_', ' ')}" if unit else ""
+
+
+def _parts(key: str) -> tuple[str, str]:
     match = _UNITS.match(key)
-    return match[1] if match else key
+    return (match[1], match[2]) if match else (key, "")

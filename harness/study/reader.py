@@ -88,7 +88,7 @@ def _not_toml(text: str, message: str, file: str) -> Mistake:
         )
     if line is None:  # the reader ran on to the end; say where the statement began
         line = found.open_since
-    said = "" if line is None else text.splitlines()[line - 1].strip()[:60]
+    said = "" if line is None else text.split("\n")[line - 1].strip()[:60]
     remedy = next(
         (remedy for start, remedy in _REMEDIES.items() if reason.startswith(start)),
         "mend what stands there",

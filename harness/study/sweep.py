@@ -89,7 +89,9 @@ def value_findings(groups: list[list[SweptKey]], known: Mapping[str, Node]) -> l
     for group in groups:
         columns = [_values(swept, known.get(swept.key)) for swept in group]
         own = [
-            f for swept, values in zip(group, columns, strict=True) for f in _wrong(swept, values)
+            f
+            for swept, values in zip(group, columns, strict=True)
+            for f in _wrong_values(swept, values)
         ]
         findings += own or _out_of_step(group, columns) or _repeated(group, columns)
         conditions *= max(map(len, columns))
@@ -213,7 +215,7 @@ def _swept_before(swept: SweptKey, seen: Iterable[SweptKey]) -> tuple[str, str] 
     return None
 
 
-def _wrong(swept: SweptKey, values: Sequence[Any]) -> list[Finding]:
+def _wrong_values(swept: SweptKey, values: Sequence[Any]) -> list[Finding]:
     if isinstance(swept.given, Mapping):
         if all(abs(value) < float("inf") for value in values):
             return []

@@ -2,16 +2,17 @@
 
 from __future__ import annotations
 
-import sys
 from collections.abc import Callable, Iterable, Mapping
-from typing import Any, get_args
+from typing import Any
 
 from pydantic import ValidationError
 
 from filters.models.record import BadValue
-from harness.study.keys import STUDY, Choice, Leaf, Named, Node, Row, Table, node_at, path_of
-from harness.study.mistakes import ABSENT, STATED, Finding, KeyPath
-from harness.study.names import in_another_unit, nearest, unit_of
+from harness.study.keys import Choice, Leaf, Named, Node, Row, Table, node_at, path_of
+from harness.study.mistakes import ABSENT, STATED, Finding, KeyPath, key_text
+from harness.study.names import nearest
+from harness.study.unknown_keys import meant_key, unknown_key
+from harness.study.wrong_values import wrong_value
 
 Detail = Mapping[str, Any]
 
@@ -32,43 +33,15 @@ def findings_of(error: ValidationError, root: Node, base: KeyPath = ()) -> list[
     return _once_a_list(findings)
 
 
-def unknown_key(key: str, tables: Iterable[Table], home: Choice | None = None) -> tuple[str, str]:
-    """Return rule and remedy for a key that the tables at its place do not have.
-
-    home        the choice of kinds that a table was taken from
-    """
-    known = [name for table in tables for name in table.fields]
-    other_unit = in_another_unit(key, known)
-    if other_unit is not None:
-        unit = unit_of(other_unit)
-        return f"is unknown: here this is stated in {unit}", f"write {other_unit}, in {unit}"
-    if "." in key:
-        return "is unknown", "write the dots of a key outside quotes"
-    others = [] if home is None else _kinds_with(key, home)
-    alike = nearest(key, known)
-    if others:
-        only = f"is unknown here: only {home.tag} = {' or '.join(others)} has it"  # type: ignore[union-attr]
-        return only, f"choose that, or write {alike}" if alike else "choose that, or remove it"
-    if alike is not None:
-        return "is unknown", f"did you mean {alike}?"
-    elsewhere = _places_of(key)
-    if elsewhere:
-        return "is unknown here", f"move it to {elsewhere[0]}"
-    return "is unknown", f"keys here are {', '.join(known)}"
-
-
 def _finding(detail: Detail, root: Node, base: KeyPath) -> Finding:
     kind, given = detail["type"], detail["input"]
     path = (*base, *path_of(detail["loc"], root))
     node = node_at(detail["loc"], root)
     if kind == "value_error" and isinstance(detail["ctx"]["error"], BadValue):
-        return _broken_relation(detail["ctx"]["error"], path)
-    around = node_at(detail["loc"][:-1], root)
-    if kind == "missing" and isinstance(around, Row):
-        return Finding(path[:-1], *_entries_wanted(around.size or len(given)), given)
+        broken = detail["ctx"]["error"]
+        return Finding((*path, *_parts(broken.key)), broken.rule, broken.remedy)
     if kind == "missing":
-        rule, remedy = _missing(detail["loc"], root)
-        return Finding(path, rule, remedy, ABSENT)
+        return _missing(detail, path, root)
     if kind == "extra_forbidden":
         table, home = _surroundings(detail["loc"], root)
         return Finding(path, *unknown_key(str(path[-1]), [table], home))
@@ -92,74 +65,6 @@ def _finding(detail: Detail, root: Node, base: KeyPath) -> Finding:
     return Finding(path, detail["msg"][:1].lower() + detail["msg"][1:], "correct it", STATED)
 
 
-def wrong_value(key: str, leaf: Leaf, given: Any) -> tuple[str, str]:
-    """Return rule and remedy for a value that is not what a leaf takes."""
-    choices = [value for value in get_args(leaf.type) if isinstance(value, str)]
-    if choices:
-        alike = nearest(given, choices) if isinstance(given, str) else None
-        remedy = f"did you mean {alike}?" if alike else "choose one of them"
-        return f"must be {' or '.join(choices)}", remedy
-    if leaf.type is str:
-        return ("must not be empty", "write some words") if given == "" else _TEXT
-    noun = "a whole number" if leaf.type is int else "a number"
-    if isinstance(given, bool):
-        return f"must be {noun}, not true or false", _number_wanted(key, leaf)
-    if isinstance(given, str):
-        return f"must be {noun}, not text", _number_in(given, key, leaf)
-    if not isinstance(given, int | float):
-        return f"must be {noun}", _number_wanted(key, leaf)
-    if leaf.type is int and not isinstance(given, int):
-        return "must be a whole number", "write it without a decimal point or exponent"
-    if leaf.type is float and not abs(given) <= sys.float_info.max:
-        return "must be finite", _number_wanted(key, leaf)
-    return f"must {_broken_limit(leaf, given)}", _number_wanted(key, leaf, given)
-
-
-def _broken_limit(leaf: Leaf, given: float) -> str:
-    low, is_low_in = _limit(leaf, "ge", "gt")
-    high, is_high_in = _limit(leaf, "le", "lt")
-    if leaf.type is int:  # their upper limits are those of the machine
-        return f"be at least {low}" if given < low else f"be at most {high - (not is_high_in)}"
-    if high is not None:
-        return f"lie in {'[' if is_low_in else '('}{low:g}, {high:g}{']' if is_high_in else ')'}"
-    return f"be at least {low:g}" if is_low_in else f"be above {low:g}"
-
-
-def _limit(leaf: Leaf, closed: str, open_: str) -> tuple[Any, bool]:
-    """Return the tightest limit on a side, None without one, and whether it is itself allowed."""
-    limits = [
-        (getattr(limit, name), name == closed)
-        for limit in leaf.limits
-        for name in (closed, open_)
-        if hasattr(limit, name)
-    ]
-    tightest = max if closed == "ge" else min
-    return tightest(limits, key=lambda limit: limit[0], default=(None, False))
-
-
-def _number_wanted(key: str, leaf: Leaf, given: float = 0.0) -> str:
-    if "probability" in key:
-        percent = f", {given / 100:g} for {given:g} %" if 2 <= given <= 100 else ""
-        return f"give a probability{percent}"
-    low, is_low_in = _limit(leaf, "ge", "gt")
-    high, _ = _limit(leaf, "le", "lt")
-    is_open = leaf.type is float and high is None
-    sign = "positive " if is_open and low == 0 and not is_low_in else ""
-    zero = "0 or a positive " if is_open and low == 0 and is_low_in else f"a {sign}"
-    unit = unit_of(key)
-    noun = "whole number" if leaf.type is int else "number"
-    return f"give {zero}{noun}" + (f", in {unit}" if unit else "")
-
-
-def _number_in(text: str, key: str, leaf: Leaf) -> str:
-    try:
-        float(text)
-    except ValueError:
-        return _number_wanted(key, leaf)
-    return "write it without quotes"
-
-
-_TEXT = ("must be text", "put it in quotes")
 _TABLE = ("must be a table", "give its keys under a [table] or in { }")
 
 
@@ -200,18 +105,17 @@ def _entries_wanted(size: int) -> tuple[str, str]:
     return f"must have {size} entries", f"give {size} numbers"
 
 
-def _missing(location: tuple[str | int, ...], root: Node) -> tuple[str, str]:
-    key = str(location[-1])
-    table, _ = _surroundings(location, root)
+def _missing(detail: Detail, path: KeyPath, root: Node) -> Finding:
+    around = node_at(detail["loc"][:-1], root)
+    if isinstance(around, Row):
+        return Finding(path[:-1], *_entries_wanted(around.size or 0), detail["input"])
+    table, _ = _surroundings(detail["loc"], root)
+    key = str(path[-1])
     meaning = table.meanings.get(key, "").rstrip(".")
     is_table = isinstance(table.fields.get(key), Table | Named | Choice)
-    thing = f"the table [{'.'.join(map(str, path_of(location, root)))}]" if is_table else "it"
-    return "is missing", f"add {thing}: {meaning[:1].lower()}{meaning[1:]}" if meaning else "add it"
-
-
-def _broken_relation(error: BadValue, path: KeyPath) -> Finding:
-    place = (*path, *_parts(error.key))
-    return Finding(place, error.rule, error.remedy)
+    thing = f"the table [{key_text(path)}]" if is_table else "it"
+    told = f"add {thing}: {meaning[:1].lower()}{meaning[1:]}" if meaning else f"add {thing}"
+    return Finding(path, "is missing", told, ABSENT)
 
 
 def _parts(key: str) -> KeyPath:
@@ -261,10 +165,8 @@ def _replaced_keys(details: Iterable[Detail], root: Node) -> set[KeyPath]:
     for detail in details:
         if detail["type"] == "extra_forbidden":
             path = path_of(detail["loc"], root)
-            fields = _surroundings(detail["loc"], root)[0].fields
-            key = str(path[-1])
-            meant = in_another_unit(key, fields) or nearest(key, fields)
-            replaced.add((*path[:-1], meant or ""))
+            table, _ = _surroundings(detail["loc"], root)
+            replaced.add((*path[:-1], meant_key(str(path[-1]), table.fields) or ""))
     return replaced
 
 
@@ -285,33 +187,6 @@ def _once_a_list(findings: list[Finding]) -> list[Finding]:
         place = finding.path[:-1] if is_entry else finding.path
         kept.setdefault((place, finding.rule, is_entry), finding)
     return list(kept.values())
-
-
-def _kinds_with(key: str, home: Choice) -> list[str]:
-    return [
-        kind
-        for kind, table in home.options.items()
-        if isinstance(table, Table) and key in table.fields
-    ]
-
-
-def _places_of(key: str, node: Node = STUDY, path: str = "") -> list[str]:
-    """Return the tables of a study that have a key, for keys that stand in the wrong one."""
-    if isinstance(node, Choice):
-        return [
-            place for option in node.options.values() for place in _places_of(key, option, path)
-        ]
-    if isinstance(node, Named):
-        return []
-    if not isinstance(node, Table):
-        return []
-    here = [f"[{path}]" if path else "the top of the file"] if key in node.fields else []
-    deeper = [
-        place
-        for name, child in node.fields.items()
-        for place in _places_of(key, child, f"{path}.{name}".lstrip("."))
-    ]
-    return here + deeper
 
 
 def _last_name(path: KeyPath) -> str | int:

@@ -135,3 +135,8 @@ def test_only_so_many_mistakes_are_written_out(said_of):
     lines = said_of(("[2.0, 4.0]", f"[{values}]"))
     assert len(lines) == 31
     assert lines[-1] == "... and 70 more"
+
+
+def test_marks_that_only_some_readers_take_for_line_ends_do_not_shift_lines(said_of):
+    (text,) = said_of(('"Buoy tender in fog"', '"Buoy\u2028tender"'), ("seed = 12", "seed 12"))
+    assert text.startswith("fog.toml:2: seed 12: is not TOML")

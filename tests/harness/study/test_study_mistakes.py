@@ -39,7 +39,7 @@ CASES = {
     "another unit of a compound": (
         ("acceleration_psd_m2_per_s3", "acceleration_psd_m_per_s2"),
         "11: scene.target.acceleration_psd_m_per_s2 = 0.05: is unknown: here this is stated in "
-        "m2 per s3; write acceleration_psd_m2_per_s3, in m2 per s3",
+        "m2/s3; write acceleration_psd_m2_per_s3, in m2/s3",
     ),
     "an unknown table": (
         ("[gospa]", "[gopsa]"),
@@ -88,7 +88,7 @@ CASES = {
     "a negative density": (
         ("= 2e-5", "= -2e-5"),
         "21: scene.sensor.clutter_density_per_m2 = -2e-05: must be at least 0; "
-        "give 0 or a positive number, in per m2",
+        "give 0 or a positive number, per m2",
     ),
     "infinity": (
         (NOISE, "noise_sd_m = inf"),
