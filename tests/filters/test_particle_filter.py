@@ -1,0 +1,252 @@
+"""The particle filter against exact posteriors, its likelihood against NumPy, and its limits."""
+
+import math
+
+import numpy as np
+import pytest
+from scipy.special import logsumexp
+from scipy.stats import norm
+from small_worlds import (
+    as_scans,
+    constant_velocity_world,
+    draw_scenes_of,
+    exact_mixture,
+    particle_filter,
+    random_walk_world,
+    run_on,
+)
+
+from filters.models.contract import Models
+from filters.particle_filter import ParticleStrategy, cloud_for, compiled_particle_filter
+from filters.random_numbers import numbers_of
+from filters.strategies.strategy import gate_of
+from filters.track import Ending, room_for_tracks
+
+DETECTIONS = [[0.5, 2.0], [1.5, -3.0], [-3.0, 2.5], [], [4.0, 1.0]]
+
+
+def point_mass_posterior(plain, scans, half_width=25.0, points=5001):
+    """Means and variances of a scalar random walk on a grid of places, after each scan."""
+    places = np.linspace(-half_width, half_width, points)
+    step = places[1] - places[0]
+    reach = np.arange(-600, 601) * step
+    kernel = norm.pdf(reach, 0, math.sqrt(plain.Q[0, 0])) * step
+    mass = norm.pdf(places, plain.mean[0], math.sqrt(plain.covariance[0, 0]))
+    means, variances = [], []
+    for k, scan in enumerate(scans):
+        if k > 0:
+            mass = np.convolve(mass, kernel, mode="same")
+        found = sum(norm.pdf(z, places, math.sqrt(plain.R[0, 0])) for z in scan)
+        PD = plain.detection_probability
+        mass = mass * (1 - PD + PD * found / plain.clutter)
+        mass /= mass.sum()
+        means.append(mass @ places)
+        variances.append(mass @ (places - means[-1]) ** 2)
+    return np.array(means), np.array(variances)
+
+
+def test_errors_fall_with_the_root_of_the_number_of_particles():
+    """Against a point-mass grid, 200 trials of the same scans for each number of particles.
+
+    The slope of log error over log N is -1/2; its standard error is 0.02 (each root mean square of
+    200 is good to 5 %), allowed are 0.08. The bias, of order 1/N, stays within 4 standard errors.
+    """
+    world = random_walk_world(detection_probability=0.8, clutter=0.2)
+    means, variances = point_mass_posterior(world.plain, DETECTIONS)
+    scans = as_scans([DETECTIONS] * 200, 1)
+    counts = np.array([125, 500, 2000, 8000])
+    errors = []
+    for count in counts:
+        tracks = run_on(world, particle_filter(particles=int(count)), scans)
+        offset = (tracks.means[..., 0] - means) / np.sqrt(variances)
+        errors.append(np.sqrt(np.mean(offset**2)))
+    slope = np.polyfit(np.log(counts), np.log(errors), 1)[0]
+    assert abs(slope + 0.5) < 0.08
+    assert errors[-1] < 3 / np.sqrt(counts[-1])
+    bias = offset.mean(axis=0) / (offset.std(axis=0, ddof=1) / np.sqrt(len(offset)))
+    assert np.all(np.abs(bias) < 4)
+    ratio = tracks.covariances[..., 0, 0] / variances
+    assert np.all(np.abs(ratio.mean(axis=0) - 1) < 0.03)
+
+
+def test_the_unreduced_mixture_equals_the_point_mass_grid():
+    world = random_walk_world(detection_probability=0.8, clutter=0.2)
+    means, variances = point_mass_posterior(world.plain, DETECTIONS)
+    tracks = run_on(world, exact_mixture(), as_scans([DETECTIONS], 1))
+    np.testing.assert_allclose(tracks.means[0, :, 0], means, atol=1e-8)
+    np.testing.assert_allclose(tracks.covariances[0, :, 0, 0], variances, atol=1e-7)
+
+
+def test_in_the_plane_particles_come_to_the_unreduced_mixture():
+    """The mean over 60 runs of the same scans, within 4.5 standard errors and 0.01 deviations.
+
+    20 entries at 4.5 standard errors fail by chance once in 7,000; the slack is for the bias, 1/N.
+    """
+    world = constant_velocity_world(2, detection_probability=0.8, clutter=0.02)
+    drawn = draw_scenes_of(world, np.random.default_rng(17), 1, 5, clutter_half_width=6.0)
+    exact = run_on(world, exact_mixture(), as_scans(drawn.trials, 2))
+    tracks = run_on(world, particle_filter(particles=3000), as_scans(drawn.trials * 60, 2))
+    spread = np.sqrt(np.diagonal(exact.covariances[0], axis1=1, axis2=2))
+    offset = (tracks.means - exact.means) / spread
+    standard_error = offset.std(axis=0, ddof=1) / np.sqrt(60)
+    assert np.all(np.abs(offset.mean(axis=0)) < 4.5 * standard_error + 0.01)
+
+
+def cloud_after(world, scan, particles=400, models=None):
+    """States and weights of particles after one scan, before any resampling."""
+    scans = as_scans([[scan]], 1)
+    cloud = cloud_for(2, 1, particles, scans.most_detections)
+    tracks = room_for_tracks(scans, 2)
+    compiled_particle_filter(2, 1)(
+        models or world.assumptions.models,
+        ParticleStrategy(particles, 0.0, gate_of(1.0, 1), Ending(0, math.inf, 1)),
+        world.assumptions.prior,
+        scans,
+        0,
+        numbers_of(3),
+        tracks,
+        cloud,
+    )
+    return cloud.states, cloud.weights, tracks
+
+
+def plain_weights(plain, states, scan):
+    """Normalised weights of equally likely particles, by logarithms throughout."""
+    offsets = np.reshape(scan, (-1, 1)) - states[:, 0]
+    logs = norm.logpdf(offsets, 0, math.sqrt(plain.R[0, 0]))
+    with np.errstate(divide="ignore"):
+        log_missed, log_detected = np.log(
+            [1 - plain.detection_probability, plain.detection_probability]
+        )
+        log_clutter = np.log(plain.clutter)
+    if plain.clutter == 0.0 and len(scan):
+        log_missed, log_clutter = -np.inf, 0.0
+    terms = np.vstack([np.full((1, len(states)), log_missed), logs + log_detected - log_clutter])
+    total = logsumexp(terms, axis=0)
+    return np.exp(total - logsumexp(total))
+
+
+SCANS = {
+    "none": [],
+    "one": [1.0],
+    "several": [1.0, -2.0, 0.3, 2.5],
+    "near and far": [1.0, 300.0, -1e5],
+    "all far": [300.0, -900.0],
+    "very far": [1e6],
+    "many": list(np.linspace(-30, 30, 300)),
+}
+# PD, clutter
+CONDITIONS = [
+    (0.9, 0.1),
+    (0.9, 1e-300),
+    (0.9, 1e300),
+    (0.5, 0.0),
+    (1.0, 0.1),
+    (1.0, 0.0),
+    (1.0, 1e-300),
+    (1.0, 1e300),
+    (1 - 2**-53, 1e-3),
+    (0.0, 0.1),
+]
+
+
+@pytest.mark.parametrize("scan", SCANS)
+@pytest.mark.parametrize(("PD", "clutter"), CONDITIONS)
+@pytest.mark.parametrize("noise_sd", [1.0, 1e-9])
+def test_weights_are_the_likelihoods_of_numpy(scan, PD, clutter, noise_sd):
+    """1 - PD + PD sum g / lambda, also where it leaves the range of numbers."""
+    world = constant_velocity_world(noise_sd=noise_sd, detection_probability=PD, clutter=clutter)
+    states, weights, tracks = cloud_after(world, SCANS[scan])
+    if PD == 1.0 and scan == "none":
+        np.testing.assert_array_equal(tracks.impossible, [1])
+        expected = np.full(len(weights), 1 / len(weights))
+    else:
+        np.testing.assert_array_equal(tracks.impossible, [0])
+        expected = plain_weights(world.plain, states, SCANS[scan])
+    if noise_sd == 1.0:
+        # Exponents reach 5e11 for a detection 1e6 away, and rounding is a share of them.
+        tolerance = 1e-3 if scan == "very far" else 1e-9
+        np.testing.assert_allclose(weights, expected, rtol=tolerance, atol=1e-200)
+    else:  # they reach 1e21 and leave one particle
+        np.testing.assert_array_equal(np.argmax(weights), np.argmax(expected))
+    np.testing.assert_allclose(weights.sum(), 1.0, rtol=1e-12)
+    np.testing.assert_allclose(tracks.means[0, 0], weights @ states, rtol=1e-10, atol=1e-13)
+    offsets = states - weights @ states
+    np.testing.assert_allclose(
+        tracks.covariances[0, 0], (offsets.T * weights) @ offsets, rtol=1e-8, atol=1e-13
+    )
+
+
+def looking_at_every_detection(models: Models) -> Models:
+    """The same models, said to have noise that varies with the state: then nothing is skipped."""
+    return models._replace(sensor=models.sensor._replace(same_noise=False))
+
+
+@pytest.mark.parametrize(
+    "scan", [[1.0, 40.0, -25.0, 300.0], list(np.linspace(-40, 40, 400)), [90.0]]
+)
+def test_skipping_far_detections_changes_no_bit(scan):
+    world = constant_velocity_world()
+    _, weights, tracks = cloud_after(world, scan)
+    every = looking_at_every_detection(world.assumptions.models)
+    _, expected, all_tracks = cloud_after(world, scan, models=every)
+    np.testing.assert_array_equal(weights, expected)
+    np.testing.assert_array_equal(tracks.means, all_tracks.means)
+
+
+def test_skipping_changes_no_bit_of_whole_runs():
+    world = constant_velocity_world(2, clutter=0.01)
+    drawn = draw_scenes_of(world, np.random.default_rng(5), 3, 15, clutter_half_width=60.0)
+    scans = as_scans(drawn.trials, 2)
+    strategy = particle_filter(particles=300)
+    every = looking_at_every_detection(world.assumptions.models)
+    patient = world._replace(assumptions=world.assumptions._replace(models=every))
+    found, expected = run_on(world, strategy, scans), run_on(patient, strategy, scans)
+    np.testing.assert_array_equal(found.means, expected.means)
+    np.testing.assert_array_equal(found.covariances, expected.covariances)
+
+
+def test_a_trial_alone_is_the_same_trial_in_a_batch():
+    world = constant_velocity_world(1)
+    drawn = draw_scenes_of(world, np.random.default_rng(21), 6, 8, clutter_half_width=8.0)
+    strategy = particle_filter(particles=100)
+    batch = run_on(world, strategy, as_scans(drawn.trials, 1), first_trial=40)
+    alone = run_on(world, strategy, as_scans(drawn.trials[4:5], 1), first_trial=44)
+    np.testing.assert_array_equal(alone.means[0], batch.means[4])
+    assert np.any(
+        batch.means[4] != run_on(world, strategy, as_scans(drawn.trials[4:5], 1)).means[0]
+    )
+
+
+@pytest.mark.parametrize("resample_below", [0.0, 0.5, 1.0])
+def test_when_to_resample_does_not_move_the_posterior(resample_below):
+    """200 runs of 500 particles against the grid: means within 4 standard errors and 0.02."""
+    world = random_walk_world(detection_probability=0.8, clutter=0.2)
+    means, variances = point_mass_posterior(world.plain, DETECTIONS)
+    strategy = particle_filter(particles=500, resample_below=resample_below)
+    tracks = run_on(world, strategy, as_scans([DETECTIONS] * 200, 1))
+    offset = (tracks.means[..., 0] - means) / np.sqrt(variances)
+    standard_error = offset.std(axis=0, ddof=1) / np.sqrt(200)
+    assert np.all(np.abs(offset.mean(axis=0)) < 4 * standard_error + 0.02)
+
+
+def test_systematic_resampling_keeps_every_particle_as_often_as_its_weight_says():
+    """N w_i copies, rounded down or up: after one scan and a resampling without further motion."""
+    world = random_walk_world(variance=0.0, clutter=0.05)
+    states, weights, _ = cloud_after(world, [1.0])
+    scans = as_scans([[[1.0]]], 1)
+    cloud = cloud_for(2, 1, 400, 1)
+    compiled_particle_filter(2, 1)(
+        world.assumptions.models,
+        ParticleStrategy(400, 1.0, gate_of(1.0, 1), Ending(0, math.inf, 1)),
+        world.assumptions.prior,
+        scans,
+        0,
+        numbers_of(3),
+        room_for_tracks(scans, 2),
+        cloud,
+    )
+    copies = np.array([np.sum(cloud.states[:, 0] == state) for state in states[:, 0]])
+    assert copies.sum() == 400
+    assert np.all(np.abs(copies - 400 * weights) < 1 + 1e-9)
+    np.testing.assert_array_equal(cloud.weights, 1 / 400)
