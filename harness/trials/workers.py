@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import threading
 import time
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from typing import Protocol
 
 from joblib import Parallel, cpu_count, delayed
@@ -93,19 +93,19 @@ _watching = threading.Event()
 
 
 def _run_in_worker(index: int, task: Task, parent: int) -> Outcome:
-    if not _watching.is_set():
-        _watching.set()
-        threading.Thread(target=_end_with_parent, args=(parent,), daemon=True).start()
+    end_with_parent(parent)
     warm_up([task])
     return index, run_task_safely(task)
 
 
-def _end_with_parent(
-    parent: int,
-    pause: Callable[[float], None] = time.sleep,
-    end: Callable[[int], None] = os._exit,
-) -> None:
-    """End this process once its parent is gone, by kill -9 too; kernels release the GIL for it."""
+def end_with_parent(parent: int) -> None:
+    """Have this process end once its parent is gone, by kill -9 too; kernels release the GIL."""
+    if not _watching.is_set():
+        _watching.set()
+        threading.Thread(target=_wait_for_the_end, args=(parent,), daemon=True).start()
+
+
+def _wait_for_the_end(parent: int) -> None:
     while os.getppid() == parent:
-        pause(0.5)
-    end(1)
+        time.sleep(0.5)
+    os._exit(1)

@@ -138,7 +138,7 @@ def test_no_worker_outlives_a_killed_parent(tmp_path):
         "from harness.trials import workers\n"
         "def work(parent, folder):\n"
         "    open(os.path.join(folder, str(os.getpid())), 'w').close()\n"
-        "    workers._run_in_worker(0, None, parent)\n"
+        "    workers.end_with_parent(parent)\n"
         "    time.sleep(60)\n"
         "Parallel(n_jobs=2)(delayed(work)(os.getpid(), sys.argv[1]) for _ in range(2))\n"
     )
