@@ -4,10 +4,12 @@ from filters.models.motion.coordinated_turn import CoordinatedTurn
 from filters.models.motion.nearly_constant_acceleration import NearlyConstantAcceleration
 from filters.models.motion.nearly_constant_velocity import NearlyConstantVelocity
 from filters.models.motion.piecewise_constant_acceleration import PiecewiseConstantAcceleration
+from filters.models.motion.singer import Singer
 
 MOTIONS = (
     NearlyConstantVelocity,
     PiecewiseConstantAcceleration,
     NearlyConstantAcceleration,
+    Singer,
     CoordinatedTurn,
 )

@@ -6,10 +6,9 @@ acceleration).
 
 from __future__ import annotations
 
-from typing import Any, ClassVar, Literal
+from typing import Any, Literal
 
 import numpy as np
-from pydantic import Field
 
 from filters.compiled import model_function
 from filters.models.contract import STATE_MATRIX, MotionModel
@@ -18,7 +17,7 @@ from filters.models.motion.chain_of_integrators import (
     constant_acceleration_state,
     spread_block,
 )
-from filters.models.motion.target import PerAxis, SpreadPerAxis, Target
+from filters.models.motion.target_with_acceleration import TargetWithAcceleration
 from filters.models.record import NonNegative
 
 
@@ -38,23 +37,13 @@ def white_jerk_noise(parameters: Any, interval: float, state: Any, out: Any) -> 
     spread_block(axes, 2, 2, psd * interval, out)
 
 
-class NearlyConstantAcceleration(Target):
+class NearlyConstantAcceleration(TargetWithAcceleration):
     """Acceleration disturbed by white-noise jerk of a power spectral density."""
 
     motion: Literal["nearly-constant-acceleration"]
     """Which motion model: acceleration disturbed by white-noise jerk."""
     jerk_psd_m2_per_s5: NonNegative
     """Power spectral density of the white-noise jerk along each axis, m2/s5."""
-    start_acceleration_m_per_s2: PerAxis = Field(min_length=1, max_length=3)
-    """Mean of the acceleration at scan 1 along each axis, m/s2."""
-    start_acceleration_sd_m_per_s2: SpreadPerAxis | None = None
-    """Standard deviation of the acceleration at scan 1 along each axis, m/s2."""
-
-    further_spreads: ClassVar[tuple[str, ...]] = ("start_acceleration_sd_m_per_s2",)
-
-    def start_further(self) -> tuple[float, ...]:
-        """Acceleration along each axis, m/s2."""
-        return self.start_acceleration_m_per_s2
 
     def motion_model(self) -> MotionModel:
         """Functions and parameters for the kernels."""

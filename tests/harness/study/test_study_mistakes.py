@@ -18,7 +18,7 @@ KINDS = (
 )
 MOTIONS = (
     "nearly-constant-velocity, piecewise-constant-acceleration, nearly-constant-acceleration, "
-    "coordinated-turn"
+    "singer, coordinated-turn"
 )
 
 CASES = {
