@@ -23,6 +23,11 @@ def candidates(results: Results) -> list[str]:
     return [name for name in strategy_key(results).levels if name not in results.references]
 
 
+def rivals(results: Results) -> list[str]:
+    """The candidates, or all strategies where there are only references."""
+    return candidates(results) or list(strategy_key(results).levels)
+
+
 def best_counts(results: Results, metric: str) -> dict[str, int]:
     """In how many conditions each candidate is not told apart from the best in a metric."""
     return {
@@ -39,15 +44,14 @@ def is_best(names: object, metric: str) -> bool:
 def finding(results: Results, metric: str) -> str:
     """One sentence, without its full stop, on a metric over all conditions of the results."""
     quantity = metric_quantity(results, metric)
-    rivals = candidates(results) or list(strategy_key(results).levels)
-    rows = results.summary[results.summary[STRATEGY].isin(rivals)]
+    rows = results.summary[results.summary[STRATEGY].isin(rivals(results))]
     if rows[metric].isna().all():
         why = "No trial held track" if quantity.held else "Nothing was counted"
         return f"{why}: there is no {quantity.name}"
     if metric == "track_loss_rate" and not rows["lost"].any():
         return f"No strategy lost a track{_in_any_of(len(settings_of(results)))}"
     if quantity.expected is not None:
-        return _calibration(results, metric, rivals)
+        return _calibration(results, metric)
     counts = best_counts(results, metric)
     if len(counts) > 1 and any(counts.values()):
         return _ranking(results, metric, quantity, counts)
@@ -59,17 +63,20 @@ def finding_along(results: Results, swept: SweptKey) -> str:
 
     The results are at one setting of all other swept keys.
     """
-    reach = {name: _holding_levels(results, name, swept) for name in candidates(results)}
+    reach = {name: _holding_levels(results, name, swept) for name in rivals(results)}
     share = f"{HELD_RATE:.0%}".replace("%", " % of tracks")
     if all(len(held) == len(swept.levels) for held in reach.values()):
         return f"Every strategy holds {share} at every {swept.name} swept"
     if not any(reach.values()):
         return f"No strategy holds {share} at any {swept.name} swept"
-    leader = max(reach, key=lambda name: len(reach[name]))
+    longest = max(len(held) for held in reach.values())
+    leaders = [name for name, held in reach.items() if len(held) == longest]
     last = min(reach, key=lambda name: len(reach[name]))
-    words = "up to" if reach[leader][0] == min(swept.levels) else "from"
-    text = f"{leader} holds {share} {words} {swept.described(reach[leader][-1])}"
-    if len(reach[last]) == len(reach[leader]):
+    held = reach[leaders[0]]
+    words = "up to" if held[0] == min(swept.levels) else "from"
+    verb = "holds" if len(leaders) == 1 else "hold"
+    text = f"{_who(leaders, len(reach))} {verb} {share} {words} {swept.described(held[-1])}"
+    if len(leaders) == len(reach):
         return text
     if not reach[last]:
         return f"{text}, {last} nowhere"
@@ -127,10 +134,7 @@ def _ranking(results: Results, metric: str, quantity: Quantity, counts: dict[str
     order = sorted(counts, key=lambda name: (-counts[name], typical[name][0]))
     first, last, most = order[0], order[-1], counts[order[0]]
     leaders = [name for name in counts if counts[name] == most]
-    if len(leaders) > _MOST_LISTED:
-        who = f"{len(leaders)} of {len(counts)} strategies are each"
-    else:
-        who = f"{listed(leaders)} {'is' if len(leaders) == 1 else 'are each'}"
+    who = f"{_who(leaders, len(counts))} {'is' if len(leaders) == 1 else 'are each'}"
     value = in_words(quantity, *typical[first])
     if metric == "track_loss_rate":
         value = f"{first} loses {value} of all tracks"
@@ -140,6 +144,11 @@ def _ranking(results: Results, metric: str, quantity: Quantity, counts: dict[str
         f"{who} best or not told apart from the best in {most} of {conditions} conditions; "
         f"{value} against {in_words(quantity, *typical[last])} with {last}"
     )
+
+
+def _who(names: Sequence[str], among: int) -> str:
+    """Names, or how many they are."""
+    return listed(names) if len(names) <= _MOST_LISTED else f"{len(names)} of {among} strategies"
 
 
 def _best_of_one(results: Results, metric: str, quantity: Quantity, counts: dict[str, int]) -> str:
@@ -187,11 +196,11 @@ def _range(rows: pd.DataFrame, metric: str, quantity: Quantity) -> str:
     return f"{name} runs from {ends[0]} to {ends[1]}"
 
 
-def _calibration(results: Results, metric: str, rivals: Sequence[str]) -> str:
+def _calibration(results: Results, metric: str) -> str:
     """Whose claimed errors are too small: the interval of ANEES lies above what is expected."""
     conditions = len(settings_of(results))
-    counts = {name: over_confident(results, metric, name) for name in rivals}
-    guilty = sorted((name for name in rivals if counts[name]), key=lambda name: -counts[name])
+    counts = {name: over_confident(results, metric, name) for name in rivals(results)}
+    guilty = sorted((name for name in counts if counts[name]), key=lambda name: -counts[name])
     if not guilty:
         return f"No strategy is over-confident{_in_any_of(conditions)}"
     if conditions == 1:
@@ -210,9 +219,8 @@ def over_confident(results: Results, metric: str, name: str) -> int:
 
 def _holding_levels(results: Results, name: str, swept: SweptKey) -> list[float]:
     """Levels from the easier end on, as far as the strategy holds enough of the tracks."""
-    rates = {
-        plain(row[swept.key]): row["track_loss_rate"] for _, row in _of(results, name).iterrows()
-    }
+    cases = _of(results, name)
+    rates = dict(zip(map(plain, cases[swept.key]), cases["track_loss_rate"], strict=True))
     overall = results.summary.groupby(swept.key)["track_loss_rate"].mean().sort_index()
     hardest_last = overall.iloc[-1] >= overall.iloc[0]
     held = []

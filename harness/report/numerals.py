@@ -39,7 +39,7 @@ def written(value: float, low: float = math.nan, high: float = math.nan) -> tupl
         return ("∞" if value == math.inf else NO_VALUE), ""
     places = decimal_places(value, low, high)
     sizes = [abs(x) for x in (value, low, high) if math.isfinite(x) and x != 0]
-    positional = not sizes or (max(sizes) >= 1e-3 and max(sizes) < 1e6)
+    positional = not sizes or 1e-3 <= max(sizes) < 1e6
     value_text, low_text, high_text = (_written(x, places, positional) for x in (value, low, high))
     if math.isnan(low) or math.isnan(high):
         return value_text, ""
@@ -118,7 +118,7 @@ def _label(x: float, figures: int, positional: bool) -> str:
     if x == 0 or (positional and x.is_integer()):
         return str(int(x))
     if positional:
-        return f"{float(f'{x:.{figures}g}'):.15f}".rstrip("0").rstrip(".")
+        return repr(float(f"{x:.{figures}g}")).removesuffix(".0")
     mantissa, _, exponent = f"{x:.{figures - 1}e}".partition("e")
     return _tidy(f"{mantissa.rstrip('0').rstrip('.')}e{exponent}")
 

@@ -34,6 +34,7 @@ _MARKERS = ("o", "s", "^", "D", "v", "P", "X", "<", ">")
 _LINES: tuple[Any, ...] = ("-", (0, (5, 1.5)), (0, (1.2, 1.2)), (0, (5, 1.5, 1.2, 1.5)))
 _REFERENCE_LINES: tuple[Any, ...] = ("-", (0, (5, 1.5)), (0, (1.2, 1.2)))
 
+FONT = "DejaVu Sans"  # comes with matplotlib, so that figures are the same everywhere
 WIDTH_IN = 6.3  # 16 cm
 TITLE_PT = 9.5
 SUBTITLE_PT = 7.5
@@ -45,7 +46,7 @@ BAR_PT = 0.7
 MARKER_PT = 3.4
 
 RC: dict[Any, Any] = {
-    "font.family": "DejaVu Sans",
+    "font.family": FONT,
     "text.color": TEXT,
     "text.parse_math": False,  # names and titles are the user's: a $ is a $
     "axes.edgecolor": FRAME,

@@ -77,7 +77,12 @@ def swept_keys(results: Results) -> dict[str, SweptKey]:
 
 
 def strategy_key(results: Results) -> SweptKey:
-    """The strategies, as if they were swept; a partial study may not have all of them."""
+    """The strategies, as if they were swept; a partial study may not have all of them.
+
+    raises  ValueError: there is no case at all
+    """
+    if results.summary.empty:
+        raise ValueError("the results hold no case yet; run the study first")
     present = set(results.summary[STRATEGY])
     names = tuple(name for name in results.strategies if name in present)
     return SweptKey(STRATEGY, "strategy", "", names, names, numeric=False)

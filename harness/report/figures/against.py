@@ -17,9 +17,9 @@ from harness.report.figures.curves import Curve, curve_end, draw_curve
 from harness.report.figures.page import new_page, say_empty
 from harness.report.figures.panels import (
     MOST_PANELS,
-    PANEL_HEIGHT,
     in_step_with,
     panel_grid,
+    panel_height,
     panel_keys,
     setting_in_figure,
 )
@@ -28,6 +28,7 @@ from harness.report.figures.scales import (
     apply_x,
     apply_y,
     metric_scale,
+    most_across,
     swept_places,
     swept_scale,
 )
@@ -52,9 +53,9 @@ if TYPE_CHECKING:
 
 LOSS = "track_loss_rate"
 _FEW = 5  # values; as many have bars in any case
-_NARROWEST = 0.018  # inches between bars; closer ones give way to bands
+_NARROWEST, _WIDEST = 0.018, 0.06  # inches between bars; closer ones give way to bands
 _SPREAD = 0.3  # of the distance between neighbouring values, over which strategies are spread
-_WIDEST_SPREAD = 0.15  # of the axis
+_WIDEST_SPREAD = 0.15  # of the axis, which is within its margins
 
 
 @house_style()
@@ -72,15 +73,16 @@ def metric_against(results: Results, metric: str, key: str, fixed: Setting | Non
     if x_key is None:
         raise ValueError("strategies are curves; draw a metric against a swept key")
     others = panel_keys(view, x_key.key)
-    grid, settings = panel_grid(view, others)
+    grid, settings = panel_grid(view, others, most_across(x_key))
     if grid.count > MOST_PANELS:
         raise ValueError(
             f"{metric} against {x_key.name} would take {grid.count} panels, more than "
             f"{MOST_PANELS}; fix the value of one of {', '.join(others)}"
         )
     names = strategy_key(view).levels
-    layout = layout_with_names(grid, PANEL_HEIGHT[grid.columns], names)
+    layout = layout_with_names(grid, panel_height(grid), names)
     x_scale = swept_scale(x_key, layout.panel_width)
+    layout = replace(layout, tick_lines=x_scale.tick_lines)
     bands = len(x_key.levels) > _FEW and _too_narrow(x_key, x_scale, layout.panel_width, len(names))
     page = new_page(
         _title(view, metric, x_key, grid.count),
@@ -89,7 +91,8 @@ def metric_against(results: Results, metric: str, key: str, fixed: Setting | Non
     )
     curves = _curves(view, metric, quantity, x_key, settings)
     if not bands:
-        curves = [_spread_out(panel, x_key, x_scale) for panel in curves]
+        step = _step(x_key, x_scale, layout.panel_width, len(names))
+        curves = [_spread_out(panel, x_scale, step) for panel in curves]
     y_scale = metric_scale(
         quantity,
         np.concatenate([curve.value for panel in curves for curve in panel.values()]),
@@ -155,9 +158,9 @@ def _curves(
     ]
 
 
-def _spread_out(panel: Mapping[str, Curve], x_key: SweptKey, x_scale: Scale) -> dict[str, Curve]:
+def _spread_out(panel: Mapping[str, Curve], x_scale: Scale, step: float) -> dict[str, Curve]:
     """Curves moved a little along x, so that intervals stand beside each other."""
-    middle, step = (len(panel) - 1) / 2, _step(x_key, x_scale, len(panel))
+    middle = (len(panel) - 1) / 2
     return {
         name: replace(curve, x=x_scale.shifted(curve.x, (place - middle) * step))
         for place, (name, curve) in enumerate(panel.items())
@@ -166,12 +169,13 @@ def _spread_out(panel: Mapping[str, Curve], x_key: SweptKey, x_scale: Scale) -> 
 
 def _too_narrow(x_key: SweptKey, x_scale: Scale, width: float, curves: int) -> bool:
     """Whether bars would stand too close to be told apart."""
-    return x_key.numeric and curves > 1 and width * _step(x_key, x_scale, curves) < _NARROWEST
+    return x_key.numeric and width * _step(x_key, x_scale, width, curves) < _NARROWEST
 
 
-def _step(x_key: SweptKey, x_scale: Scale, curves: int) -> float:
-    """From one curve's bars to the next one's, as a share of the axis."""
-    return min(_SPREAD * _least_gap(x_key, x_scale), _WIDEST_SPREAD) / max(curves, 2)
+def _step(x_key: SweptKey, x_scale: Scale, width: float, curves: int) -> float:
+    """From one curve's bars to the next one's, as a share of an axis so many inches wide."""
+    spread = min(_SPREAD * _least_gap(x_key, x_scale), _WIDEST_SPREAD)
+    return min(spread / max(curves, 2), _WIDEST / width)
 
 
 def _least_gap(x_key: SweptKey, x_scale: Scale) -> float:

@@ -49,9 +49,10 @@ def layout_with_names(grid: Grid, panel_height: float, names: Sequence[str]) -> 
 def name_curves(page: Page, panel: int, ends: Sequence[CurveEnd]) -> None:
     """Write the names of curves right of their panel, each led to from its curve's end.
 
-    Nothing is written where the names stand below, or where another panel is to the right.
+    Nothing is written where the names stand below, or beside a panel that is not the last of a
+    full row.
     """
-    if not ends or page.layout.room_below or not page.is_last_in_row(panel):
+    if not ends or page.layout.room_below or not page.is_right(panel):
         return
     axes = page.panels[panel]
     width, height = page.layout.panel_width, page.layout.panel_height
@@ -111,7 +112,7 @@ def name_curves_below(page: Page, looks: dict[str, Look]) -> None:
 
 
 def _legend_height(names: Sequence[str]) -> float:
-    """Inches that `legend_below` takes."""
+    """Inches that `name_curves_below` takes."""
     return len(_legend_lines(names)) * line_height(style.TICK_PT) * 1.15 + 0.08
 
 

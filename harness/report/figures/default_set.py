@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import itertools
 import math
 import re
+from collections.abc import Collection
 from typing import TYPE_CHECKING
 
 from harness.evidence.results import Results
@@ -18,6 +20,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 MOST_FIGURES = 4  # of one metric against one key
+_LONGEST_STEM = 100
 
 
 def all_figures(results: Results) -> dict[str, Figure]:
@@ -47,11 +50,12 @@ def figures_against(results: Results, metric: str, key: str) -> dict[str, Figure
     key = resolve(results, key)
     quantity = metric_quantity(results, metric)
     settings = _settings_of_figures(results, key)
-    stem = _slug(f"{quantity.name} over {swept_keys(results)[key].name}")
-    figures = {}
+    name = f"{quantity.name} over {swept_keys(results)[key].name}"
+    figures: dict[str, Figure] = {}
     for setting in _evenly_chosen(settings, MOST_FIGURES):
-        at = f"_at_{_slug(setting_in_words(results, setting))}" if setting else ""
-        figures[stem + at] = metric_against(results, metric, key, setting)
+        at = f" at {setting_in_words(results, setting)}" if setting else ""
+        stem = _unused_stem(name + at, figures)
+        figures[stem] = metric_against(results, metric, key, setting)
     return figures
 
 
@@ -88,6 +92,8 @@ def _evenly_chosen(settings: list[Setting], most: int) -> list[Setting]:
     return [settings[math.floor(i * (len(settings) - 1) / (most - 1) + 0.5)] for i in range(most)]
 
 
-def _slug(text: str) -> str:
-    """Text as part of a file name on any system."""
-    return re.sub(r"[^a-z0-9.-]+", "_", text.lower()).strip("_.")
+def _unused_stem(text: str, used: Collection[str]) -> str:
+    """Text as the stem of a file name on any system, with a number where it is taken."""
+    stem = re.sub(r"[^a-z0-9.-]+", "_", text.lower())[:_LONGEST_STEM].strip("_.")
+    candidates = (stem if number == 1 else f"{stem}_{number}" for number in itertools.count(1))
+    return next(candidate for candidate in candidates if candidate not in used)

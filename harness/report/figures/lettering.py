@@ -5,6 +5,8 @@ from __future__ import annotations
 import functools
 import re
 
+from harness.report.style import FONT
+
 POINTS_PER_INCH = 72.0
 LINE_SPACING = 1.25
 NO_BREAK_SPACE = "\u00a0"
@@ -18,7 +20,7 @@ def text_width(text: str, size: float, bold: bool = False) -> float:
     from matplotlib.font_manager import FontProperties
     from matplotlib.textpath import text_to_path
 
-    font = FontProperties(family="DejaVu Sans", size=size, weight="bold" if bold else "normal")
+    font = FontProperties(family=FONT, size=size, weight="bold" if bold else "normal")
     width, _, _ = text_to_path.get_text_width_height_descent(text, font, ismath=False)
     return float(width) / POINTS_PER_INCH
 
@@ -45,6 +47,11 @@ def _broken_paragraph(text: str, size: float, width: float, bold: bool) -> list[
         else:
             lines += _cut(word, size, width, bold)
     return lines
+
+
+def joined_parts(text: str) -> list[str]:
+    """Parts of a text that a line need not cut: ends at spaces and at signs that join words."""
+    return [part for word in text.split(" ") for part in _PIECES.findall(word)]
 
 
 def _cut(word: str, size: float, width: float, bold: bool) -> list[str]:

@@ -17,7 +17,7 @@ from harness.report.figures.curves import Curve, curve_end
 from harness.report.figures.page import Grid, Page, new_page, say_empty
 from harness.report.figures.panels import in_figure
 from harness.report.figures.scales import Scale, apply_x, apply_y, metric_scale
-from harness.report.findings import candidates, case_in_words, trials_run
+from harness.report.findings import case_in_words, rivals, trials_run
 from harness.report.quantities import METRICS, Quantity
 from harness.report.style import Look, house_style, looks
 from harness.report.swept import (
@@ -76,10 +76,10 @@ def over_time(results: Results, settings: Sequence[Setting] | None = None) -> Fi
 
 def telling_conditions(results: Results) -> dict[str, dict[str, Any]]:
     """The easiest, the middle and the hardest condition, by mean track loss, then mean error."""
-    rivals = candidates(results) or list(strategy_key(results).levels)
+    compared = rivals(results)
     hardness: dict[tuple[Any, ...], list[tuple[float, float]]] = {}
     for case in results.summary.to_dict("records"):
-        if case[STRATEGY] in rivals:
+        if case[STRATEGY] in compared:
             condition = tuple(plain(case[key]) for key in results.swept)
             found = hardness.setdefault(condition, [])
             found.append((case["track_loss_rate"], case["rmse_position"]))
@@ -212,9 +212,9 @@ def _first_scored_time(results: Results, scans: pd.DataFrame) -> float:
 
 def _title(results: Results, told: Sequence[Told]) -> str:
     """What the worst and the best candidate lose where most is lost."""
-    rivals = candidates(results) or list(strategy_key(results).levels)
     hardest = max((one.summary for one in told), key=lambda cases: cases[_LOSS].max())
-    cases = hardest[hardest[STRATEGY].isin(rivals)].to_dict("records")
+    compared = hardest[hardest[STRATEGY].isin(rivals(results))]
+    cases = compared.dropna(subset=_LOSS).to_dict("records")
     cases.sort(key=lambda case: case[_LOSS])
     if not any(case["lost"] for case in cases):
         return "No strategy loses a track"

@@ -58,6 +58,7 @@ class Layout:
 
     room_right, room_below   for names of curves, beside or below the panels
     room_left                for labels of the y axis and of its ticks
+    tick_lines               lines of text that labels of x ticks take
     """
 
     grid: Grid
@@ -65,6 +66,7 @@ class Layout:
     room_right: float = _RIGHT
     room_below: float = 0.0
     room_left: float = _LEFT
+    tick_lines: int = 1
 
     @cached_property
     def row_heads(self) -> list[Lines]:
@@ -112,10 +114,9 @@ class Page:
         """Whether a panel is the first of its row."""
         return panel % self.layout.grid.columns == 0
 
-    def is_last_in_row(self, panel: int) -> bool:
-        """Whether nothing stands right of a panel."""
-        grid = self.layout.grid
-        return panel % grid.columns == grid.columns - 1 or panel == grid.count - 1
+    def is_right(self, panel: int) -> bool:
+        """Whether a panel is the last of a full row."""
+        return panel % self.layout.grid.columns == self.layout.grid.columns - 1
 
     def is_bottom(self, panel: int) -> bool:
         """Whether nothing stands below a panel."""
@@ -133,7 +134,8 @@ def new_page(title: str, subtitle: str, layout: Layout) -> Page:
     below_text = below_title + line_height(style.SUBTITLE_PT) * len(subtitle_lines)
     top = below_text + _ABOVE_PANELS + _HEAD_LINE * _most_lines(layout.column_heads)
     bottom = top + layout.pitch * layout.grid.rows - _GAP
-    height = bottom + _BELOW_PANELS + layout.room_below
+    more_lines = line_height(style.TICK_PT) * (layout.tick_lines - 1)
+    height = bottom + _BELOW_PANELS + more_lines + layout.room_below
 
     figure = Figure(figsize=(style.WIDTH_IN, height))
     _write(figure, _EDGE, _EDGE, title_lines, style.TITLE_PT, weight="bold")

@@ -13,9 +13,9 @@ from harness.report.numerals import typeset_number, typeset_unit, with_unit
 from harness.report.swept import SweptKey, described, settings_of, swept_keys
 
 MOST_PANELS = 12
-_MOST_ACROSS = 4
+MOST_ACROSS = 4
 # Inches, by the number of panels beside each other.
-PANEL_HEIGHT = {1: 2.7, 2: 1.9, 3: 1.4, 4: 1.15}
+_PANEL_HEIGHT = {1: 2.7, 2: 1.9, 3: 1.4, 4: 1.15}
 
 
 def panel_keys(results: Results, drawn: str) -> list[str]:
@@ -37,7 +37,9 @@ def in_step_with(results: Results, drawn: str) -> list[str]:
     return [key for key in keys if key != drawn and _in_step(results, keys, key, drawn)]
 
 
-def panel_grid(results: Results, keys: Sequence[str]) -> tuple[Grid, list[dict[str, Any]]]:
+def panel_grid(
+    results: Results, keys: Sequence[str], most_across: int = MOST_ACROSS
+) -> tuple[Grid, list[dict[str, Any]]]:
     """The panels of some swept keys: what stands where, and the setting of each.
 
     Two keys in full combination make rows and columns; anything else is laid out line by line.
@@ -47,7 +49,7 @@ def panel_grid(results: Results, keys: Sequence[str]) -> tuple[Grid, list[dict[s
     levels = [swept[key].levels for key in keys]
     if len(keys) == 2 and len(settings) == math.prod(map(len, levels)):
         slow, fast = keys
-        if 1 < len(levels[1]) <= _MOST_ACROSS:
+        if 1 < len(levels[1]) <= most_across:
             grid = Grid(
                 columns=len(levels[1]),
                 count=len(settings),
@@ -57,7 +59,13 @@ def panel_grid(results: Results, keys: Sequence[str]) -> tuple[Grid, list[dict[s
             ordered = [{slow: row, fast: column} for row in levels[0] for column in levels[1]]
             return grid, ordered
     titles = [setting_in_figure(swept, setting) for setting in settings] if keys else []
-    return Grid(_columns_for(len(settings)), len(settings), titles=titles), settings
+    columns = min(_columns_for(len(settings)), most_across)
+    return Grid(columns, len(settings), titles=titles), settings
+
+
+def panel_height(grid: Grid) -> float:
+    """Height of a panel in inches: lower where many stand beside or above each other."""
+    return min(_PANEL_HEIGHT[grid.columns], _PANEL_HEIGHT[min(grid.rows, MOST_ACROSS)])
 
 
 def in_figure(key: SweptKey, level: Any) -> str:
@@ -82,7 +90,7 @@ def _columns_for(panels: int) -> int:
         return panels
     if panels == 4:
         return 2
-    return 3 if panels <= 9 else _MOST_ACROSS
+    return 3 if panels <= 9 else MOST_ACROSS
 
 
 def _in_step(results: Results, keys: Mapping[str, SweptKey], first: str, second: str) -> bool:

@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from harness.report.figures.lettering import text_width
+from harness.report.figures.lettering import broken, joined_parts, text_width
+from harness.report.figures.panels import MOST_ACROSS
 from harness.report.numerals import typeset_number, typeset_unit
 from harness.report.quantities import Quantity, head
 from harness.report.style import TICK_PT
@@ -19,6 +20,8 @@ if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.axis import Axis
 
+_ACROSS = 4.6  # inches that panels have beside each other, roughly
+_BETWEEN = 0.06  # between words below an axis
 _MARGIN = 0.08  # of the axis, beside the first and the last value
 _WIDE_RATIO = 10.0  # values that differ by more than this factor need a logarithmic axis
 
@@ -28,7 +31,7 @@ class Scale:
     """One axis.
 
     low, high  its ends
-    ticks      where the values are, with their labels; none: every 1, 2 or 5
+    ticks      where the values are, with their labels; without any, at round numbers
     label      what it shows, with the unit
     """
 
@@ -38,6 +41,11 @@ class Scale:
     label: str
     ticks: tuple[float, ...] = ()
     tick_labels: tuple[str, ...] = ()
+
+    @property
+    def tick_lines(self) -> int:
+        """Lines that the longest label takes."""
+        return 1 + max((label.count("\n") for label in self.tick_labels), default=0)
 
     def shifted(self, values: np.ndarray, share: float) -> np.ndarray:
         """Values moved along the axis by a share of its length."""
@@ -53,6 +61,14 @@ class Scale:
         return (value - low) / (high - low)
 
 
+def most_across(key: SweptKey) -> int:
+    """How many panels may stand beside each other, so that words below their axes stay whole."""
+    if key.numeric:
+        return MOST_ACROSS
+    widest = max(text_width(part, TICK_PT) for text in key.labels for part in joined_parts(text))
+    return min(max(int(_ACROSS / ((widest + _BETWEEN) * len(key.levels))), 1), MOST_ACROSS)
+
+
 def swept_scale(key: SweptKey, axis_width: float) -> Scale:
     """The axis of a swept quantity; levels that are no numbers stand beside each other.
 
@@ -62,8 +78,10 @@ def swept_scale(key: SweptKey, axis_width: float) -> Scale:
     """
     label = head(key.name, typeset_unit(key.unit))
     if not key.numeric:
-        places = swept_places(key).values()
-        return Scale(False, -0.5, len(places) - 0.5, label, tuple(places), key.labels)
+        places = tuple(swept_places(key).values())
+        room = max(axis_width / len(places) - _BETWEEN, 0.2)
+        lines = tuple("\n".join(broken(text, TICK_PT, room)) for text in key.labels)
+        return Scale(False, -0.5, len(places) - 0.5, label, places, lines)
     levels = sorted(key.levels)
     labels = tuple(typeset_number(key.label(level)) for level in levels)
     widths = [text_width(text, TICK_PT) for text in labels]
@@ -72,13 +90,13 @@ def swept_scale(key: SweptKey, axis_width: float) -> Scale:
     low, high = _padded(levels[0], levels[-1], logarithmic, margin)
     bare = Scale(logarithmic, low, high, label)
     centres = [bare.place(level) * axis_width for level in levels]
-    room = all(
+    apart = all(
         right - left > (first + second) / 2 + 0.04
         for left, right, first, second in zip(
             centres, centres[1:], widths, widths[1:], strict=False
         )
     )
-    return replace(bare, ticks=tuple(levels), tick_labels=labels) if room else bare
+    return replace(bare, ticks=tuple(levels), tick_labels=labels) if apart else bare
 
 
 def swept_places(key: SweptKey) -> dict[Any, float]:
@@ -101,19 +119,17 @@ def metric_scale(quantity: Quantity, values: Iterable[float], ends: Iterable[flo
     if not positive:
         return Scale(False, 0.0, 1.0, label)
     if quantity.rate:
-        return _rate_scale(label, [x for x in values if x > 0], positive, 100.0)
+        return _rate_scale(label, [x for x in values if x > 0], positive)
     ratio = max(values) / min(values) if min(values) > 0 else 1.0
     logarithmic = shown[0] > 0 and (ratio > _WIDE_RATIO or quantity.expected is not None)
     low, high = _padded(shown[0], shown[-1], logarithmic)
     return Scale(logarithmic, low if logarithmic else max(low, 0.0), high, label)
 
 
-def _rate_scale(
-    label: str, rates: Sequence[float], shown: Sequence[float], highest: float
-) -> Scale:
-    """Logarithmic; lower ends of intervals may leave the axis, as they can come close to zero."""
+def _rate_scale(label: str, rates: Sequence[float], shown: Sequence[float]) -> Scale:
+    """Logarithmic, in per cent; it need not hold lower ends of intervals, which come near zero."""
     bottom = min(rates) / 2 if rates else min(shown) / 5
-    top = min(max(shown) * 1.3, highest * 1.05)
+    top = min(max(shown) * 1.3, 105.0)
     return Scale(True, min(bottom, top / _WIDE_RATIO), top, label)
 
 

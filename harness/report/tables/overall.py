@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import replace
 
 import pandas as pd
@@ -26,6 +26,8 @@ from harness.report.tables.table import SOFT_HYPHEN, Cell, Column, Row, Table
 from metrics.intervals import wilson_interval
 
 LOSS, ERROR, CALIBRATION = "track_loss_rate", "rmse_position", "anees"
+
+EQUAL_COSTS = 0.1  # costs that differ by less are as good as equal: they are measured
 
 Measure = tuple[Column, Callable[[pd.DataFrame], Cell]]  # of a strategy's cases
 
@@ -158,6 +160,12 @@ def _notes(results: Results, conditions: int) -> tuple[str, ...]:
     return (*notes, *common_notes(results))
 
 
+def _cheapest(costs: Mapping[str, float]) -> str:
+    """Who costs least; of those within a tenth of it, the first in the study."""
+    least = min(costs.values())
+    return next(name for name, cost in costs.items() if cost <= (1 + EQUAL_COSTS) * least)
+
+
 def _meaning(results: Results, conditions: int) -> str:
     """Which strategy leads, what the cheapest gives up, and whether the leader is honest."""
     loss, error = best_counts(results, LOSS), best_counts(results, ERROR)
@@ -165,7 +173,7 @@ def _meaning(results: Results, conditions: int) -> str:
         return finding(results, LOSS) + "."
     cost = results.summary.groupby(STRATEGY)["us_per_scan"].median()
     leader = max(loss, key=lambda name: (loss[name], error[name], -cost[name]))
-    cheapest = min(loss, key=lambda name: cost[name])
+    cheapest = _cheapest({name: cost[name] for name in loss})
     text = (
         f"{leader}: best or not told apart from the best in {loss[leader]} of {conditions} "
         f"conditions on track loss, in {error[leader]} on position error"
