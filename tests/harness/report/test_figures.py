@@ -194,9 +194,11 @@ def test_points_and_bars_are_the_summary(one_key):
         assert ends == pytest.approx(expected)
 
 
-def test_densities_and_rates_have_logarithmic_axes(study):
+def test_densities_and_rates_have_logarithmic_axes(study, invent):
     loss = metric_against(study, "track_loss_rate", DENSITY).axes[0]
     assert (loss.get_xscale(), loss.get_yscale()) == ("log", "log")
+    close = invent(sweep={DENSITY: [1e-4, 2e-4]}, strategies=("pda",))
+    assert metric_against(close, "gospa", DENSITY).axes[0].get_xscale() == "log"
     calibration = metric_against(study, "anees", DETECTION).axes[0]
     assert calibration.get_xscale() == "linear"
 
@@ -404,7 +406,7 @@ def test_equal_results_give_equal_files_in_another_process_too(no_sweep, tmp_pat
     """With another seed of Python's hashes, and other settings of the user's matplotlib."""
     pickled = tmp_path / "results"
     pickled.write_bytes(pickle.dumps(no_sweep))
-    with mpl.rc_context({"font.size": 25, "lines.linewidth": 9, "svg.hashsalt": None}):
+    with mpl.rc_context({"font.size": 25, "axes.facecolor": "red", "svg.hashsalt": None}):
         ours = save_figure(over_time(no_sweep), tmp_path / "ours")
     script = (
         "import pickle, sys\n"
