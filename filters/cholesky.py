@@ -35,20 +35,17 @@ def factorise(n: int, matrix: Any, factor: Any) -> bool:
 
 
 @helper
-def half_log_determinant(n: int, factor: Any) -> float:
-    """Half the log determinant of L L'."""
-    total = 0.0
+def inverse_root_determinant(n: int, factor: Any) -> float:
+    """One over the root of the determinant of L L'."""
+    product = 1.0
     for i in range(n):
-        total -= math.log(factor[i, i])
-    return total
+        product *= factor[i, i]
+    return product
 
 
 @helper
-def squared_distance(n: int, factor: Any, difference: Any, limit: float, work: Any) -> float:
-    """Squared Mahalanobis distance d' (L L')^-1 d; stops early once it is not below the limit.
-
-    factor (n, n); difference, work (n,). A value at or above the limit is a lower bound only.
-    """
+def squared_distance(n: int, factor: Any, difference: Any, work: Any) -> float:
+    """Squared Mahalanobis distance d' (L L')^-1 d; factor (n, n), difference and work (n,)."""
     total = 0.0
     for row in range(n):
         value = difference[row]
@@ -57,8 +54,6 @@ def squared_distance(n: int, factor: Any, difference: Any, limit: float, work: A
         value *= factor[row, row]
         work[row] = value
         total += value * value
-        if not total < limit:
-            return total
     return total
 
 

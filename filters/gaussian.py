@@ -69,36 +69,43 @@ def gain(n: int, m: int, cross: Any, factor: Any, out: Any) -> None:
 
 @helper
 def condition_covariance(
-    n: int, m: int, gain_: Any, jacobian: Any, noise: Any, prior: Any, work: Any, out: Any
+    n: int,
+    m: int,
+    gain_: Any,
+    cross: Any,
+    jacobian: Any,
+    noise: Any,
+    prior: Any,
+    work: Any,
+    out: Any,
 ) -> None:
     """Write (I - K H) P (I - K H)' + K R K', Joseph's form.
 
+    With A = (I - K H) P it is A - (A H' - K R) K', which takes fewer products.
     It stays positive definite where P - K S K' would lose its digits to cancellation, as when a
-    precise measurement meets a vague prior. work (2, n, n).
+    precise measurement meets a vague prior. cross P H' (n, m); work (2, n, n).
 
     source      Bucy and Joseph (1968); Bar-Shalom, Li and Kirubarajan (2001), eq. 5.2.3-18
     """
-    kept = work[0]  # I - K H
-    moved = work[1]  # (I - K H) P
-    for row in range(n):
+    kept, left = work[0], work[1]
+    for row in range(n):  # A = P - K (P H')'
         for column in range(n):
-            value = 1.0 if row == column else 0.0
+            value = prior[row, column]
             for k in range(m):
-                value -= gain_[row, k] * jacobian[k, column]
+                value -= gain_[row, k] * cross[column, k]
             kept[row, column] = value
-    for row in range(n):
-        for column in range(n):
+    for row in range(n):  # A H' - K R: zero but for rounding at the best gain
+        for column in range(m):
             value = 0.0
             for k in range(n):
-                value += kept[row, k] * prior[k, column]
-            moved[row, column] = value
+                value += kept[row, k] * jacobian[column, k]
+            for k in range(m):
+                value -= gain_[row, k] * noise[k, column]
+            left[row, column] = value
     for row in range(n):
         for column in range(row + 1):
-            value = 0.0
-            for k in range(n):
-                value += moved[row, k] * kept[column, k]
-            for i in range(m):
-                for k in range(m):
-                    value += gain_[row, i] * noise[i, k] * gain_[column, k]
+            value = kept[row, column]
+            for k in range(m):
+                value -= left[row, k] * gain_[column, k]
             out[row, column] = value
             out[column, row] = value

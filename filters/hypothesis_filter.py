@@ -20,7 +20,7 @@ from filters.linearise import Prediction
 from filters.mixture import Mixture, copy_gaussian, mixture_moments
 from filters.models.contract import Models, MotionModel
 from filters.track import Ending, Prior, Scan, Scans, Tracks, clear_estimate, past_limit, scan_of
-from filters.update import Gate, explain_by_component, log_or_minus_infinity, settle
+from filters.update import Gate, explain_by_component, settle
 
 ESTIMATE_MEAN = 0
 ESTIMATE_HEAVIEST = 1
@@ -71,6 +71,7 @@ def room_for(n: int, m: int, capacity: int, most_detections: int) -> Room:
             np.empty((m, m)),
             np.empty((n, m)),
             np.empty((2, n, n)),
+            np.zeros(1, np.bool_),
         ),
         np.empty(n),
         np.empty((n, n)),
@@ -118,7 +119,6 @@ def _explain(
             )
         else:
             _predict(n, models.motion, scan.interval, component, room)
-        log_weight = log_or_minus_infinity(mixture.weights[component])
         rows = explain_by_component(
             n,
             m,
@@ -126,7 +126,7 @@ def _explain(
             gate,
             scan,
             component,
-            log_weight,
+            mixture.weights[component],
             room.mean,
             hypotheses,
             rows,

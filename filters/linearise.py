@@ -24,6 +24,7 @@ class Prediction(NamedTuple):
     factor: Any  # (m, m) its Cholesky factor, see cholesky
     gain: Any  # (n, m)
     work: Any  # (2, n, n)
+    filled: Any  # (1,) bool: jacobian and noise hold values, good for as long as they are constant
 
 
 @helper
@@ -43,11 +44,16 @@ def first_order(
     definite; nothing can be said of the scan then.
     """
     sensor.measure(sensor.parameters, site, mean, out.measurement)
-    sensor.jacobian(sensor.parameters, site, mean, out.jacobian)
-    sensor.noise(sensor.parameters, site, mean, out.noise)
+    if not (sensor.linear and out.filled[0]):
+        sensor.jacobian(sensor.parameters, site, mean, out.jacobian)
+    if not (sensor.same_noise and out.filled[0]):
+        sensor.noise(sensor.parameters, site, mean, out.noise)
+    out.filled[0] = True
     innovation_covariance(n, m, out.jacobian, out.noise, covariance, out.cross, out.spread)
     if not factorise(m, out.spread, out.factor):
         return False
     gain(n, m, out.cross, out.factor, out.gain)
-    condition_covariance(n, m, out.gain, out.jacobian, out.noise, covariance, out.work, conditioned)
+    condition_covariance(
+        n, m, out.gain, out.cross, out.jacobian, out.noise, covariance, out.work, conditioned
+    )
     return True

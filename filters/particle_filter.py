@@ -23,7 +23,7 @@ import numpy as np
 from filters.cholesky import (
     factorise,
     factorise_semidefinite,
-    half_log_determinant,
+    inverse_root_determinant,
     squared_distance,
 )
 from filters.compiled import helper, kernel
@@ -174,7 +174,7 @@ def _prepare_noise(m: int, models: Models, scan: Scan, state: Any, cloud: Cloud)
     sensor = models.sensor
     sensor.noise(sensor.parameters, scan.site, state, cloud.noise)
     factorise(m, cloud.noise, cloud.noise_factor)
-    return -half_log_determinant(m, cloud.noise_factor) - m * HALF_LOG_TWO_PI
+    return math.log(inverse_root_determinant(m, cloud.noise_factor)) - m * HALF_LOG_TWO_PI
 
 
 @helper
@@ -241,7 +241,7 @@ def _weigh(
                 m, sensor.periods, scan.detections[j], cloud.measurements[i], cloud.differences[0]
             )
             half = 0.5 * squared_distance(
-                m, cloud.noise_factor, cloud.differences[0], math.inf, cloud.differences[1]
+                m, cloud.noise_factor, cloud.differences[0], cloud.differences[1]
             )
             exponent = peak - cloud.log_clutter[j] - half
             if cloud.weights[i] > 0.0:
@@ -335,7 +335,7 @@ def _has_something_near(m: int, models: Models, scan: Scan, gate: Gate, cloud: C
         mean[a] += reference[a]
     for j in range(scan.detections.shape[0]):
         difference(m, sensor.periods, scan.detections[j], mean, offset)
-        distance = squared_distance(m, cloud.noise_factor, offset, gate.limit, cloud.differences[1])
+        distance = squared_distance(m, cloud.noise_factor, offset, cloud.differences[1])
         if distance < gate.limit:
             return True
     return False

@@ -25,6 +25,9 @@ _LOW_HALF = np.uint64(0xFFFFFFFF)
 _32 = np.uint64(32)
 _11 = np.uint64(11)
 _ONE = np.uint64(1)
+_BYTE = np.uint64(0xFF)
+_LAYERS = 256
+_TAIL = 3.6541528853610088  # where the lowest layer's tail begins, so that the highest ends at 1
 _ROUNDS = 10
 _TO_UNIT = 2.0**-53
 
@@ -94,13 +97,19 @@ def _next_block(numbers: Numbers) -> None:
 
 
 @helper
-def uniform(numbers: Numbers) -> float:
-    """Next number, uniform on [0, 1)."""
+def _next_word(numbers: Numbers) -> Any:
+    """Next 64 random bits."""
     if numbers.used[0] == 4:
         _next_block(numbers)
     word = numbers.block[numbers.used[0]]
     numbers.used[0] += 1
-    return float(word >> _11) * _TO_UNIT
+    return word
+
+
+@helper
+def uniform(numbers: Numbers) -> float:
+    """Next number, uniform on [0, 1)."""
+    return float(_next_word(numbers) >> _11) * _TO_UNIT
 
 
 @helper
@@ -109,15 +118,57 @@ def exponential(numbers: Numbers) -> float:
     return -math.log(1.0 - uniform(numbers))
 
 
+def _ziggurat() -> tuple[np.ndarray, np.ndarray]:
+    """Cover exp(-x^2 / 2), x > 0, by layers of equal area, from the bottom up.
+
+    returns     right edge of each layer (256,), that of the lowest as if it had no tail, and a last
+                one of 0; height of the curve there
+    """
+    area = _TAIL * math.exp(-0.5 * _TAIL**2)
+    area += math.sqrt(math.pi / 2) * math.erfc(_TAIL / math.sqrt(2))
+    edges = np.zeros(_LAYERS + 1)
+    edges[0] = area * math.exp(0.5 * _TAIL**2)
+    edges[1] = _TAIL
+    for i in range(2, _LAYERS):
+        height = math.exp(-0.5 * edges[i - 1] ** 2) + area / edges[i - 1]
+        edges[i] = math.sqrt(-2.0 * math.log(height))
+    return edges, np.exp(-0.5 * edges**2)
+
+
+_EDGES, _HEIGHTS = _ziggurat()
+
+
+@helper
+def _beyond(numbers: Numbers) -> float:
+    """A normal number, given that it lies beyond the lowest layer's edge.
+
+    source      Marsaglia (1964), Technometrics 6, Generating a variable from the tail
+    """
+    while True:
+        excess = exponential(numbers) / _TAIL
+        if 2.0 * exponential(numbers) > excess * excess:
+            return _TAIL + excess
+
+
+@helper
+def normal(numbers: Numbers) -> float:
+    """Next number, standard normal."""
+    while True:
+        word = _next_word(numbers)
+        layer = int(word & _BYTE)
+        value = (2.0 * float(word >> _11) * _TO_UNIT - 1.0) * _EDGES[layer]
+        size = abs(value)
+        if size < _EDGES[layer + 1]:  # under the curve whatever the height, 99 times in 100
+            return value
+        if layer == 0:
+            return math.copysign(_beyond(numbers), value)
+        low, high = _HEIGHTS[layer], _HEIGHTS[layer + 1]
+        if low + uniform(numbers) * (high - low) < math.exp(-0.5 * value * value):
+            return value
+
+
 @helper
 def fill_normals(numbers: Numbers, count: int, out: Any) -> None:
-    """Write independent standard normal numbers into out[:count], two from each pair of uniforms.
-
-    source      Box and Muller (1958), Annals of Mathematical Statistics 29
-    """
-    for i in range(0, count, 2):
-        radius = math.sqrt(2.0 * exponential(numbers))
-        angle = 2.0 * math.pi * uniform(numbers)
-        out[i] = radius * math.cos(angle)
-        if i + 1 < count:
-            out[i + 1] = radius * math.sin(angle)
+    """Write independent standard normal numbers into out[:count]."""
+    for i in range(count):
+        out[i] = normal(numbers)

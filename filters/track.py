@@ -98,6 +98,6 @@ def past_limit(ending: Ending, empty_scans: int, covariance: Any) -> bool:
     if ending.empty_scans > 0 and empty_scans >= ending.empty_scans:
         return True
     for axis in range(ending.axes):
-        if math.sqrt(covariance[axis, axis]) > ending.position_sd:
+        if covariance[axis, axis] > ending.position_sd * ending.position_sd:
             return True
     return False

@@ -19,7 +19,7 @@ from __future__ import annotations
 import math
 from typing import Any, NamedTuple
 
-from filters.cholesky import half_log_determinant, squared_distance
+from filters.cholesky import inverse_root_determinant, squared_distance
 from filters.compiled import helper
 from filters.hypotheses import NOT_DETECTED, Hypotheses, normalise
 from filters.linearise import Prediction, first_order
@@ -60,7 +60,7 @@ def explain_by_component(
     gate: Gate,
     scan: Scan,
     component: int,
-    log_weight: float,
+    weight: float,
     mean: Any,
     hypotheses: Hypotheses,
     rows: int,
@@ -76,6 +76,7 @@ def explain_by_component(
     table, means, covariances, _ = hypotheses
     innovation, solved = work[0], work[1]
     prior = 2 * component
+    log_weight = log_or_minus_infinity(weight)
     usable = first_order(
         n, m, models.sensor, scan.site, mean, covariances[prior], covariances[prior + 1], prediction
     )
@@ -92,16 +93,13 @@ def explain_by_component(
     if not usable:
         return rows
 
-    peak = (
-        log_or_minus_infinity(detected)
-        - half_log_determinant(m, prediction.factor)
-        - m * HALF_LOG_TWO_PI
-    )
+    density_at_peak = inverse_root_determinant(m, prediction.factor)
+    peak = log_or_minus_infinity(detected * density_at_peak) - m * HALF_LOG_TWO_PI
     for j in range(scan.detections.shape[0]):
         if scan.origin != ORIGIN_UNKNOWN and j != scan.origin:
             continue
         difference(m, models.sensor.periods, scan.detections[j], prediction.measurement, innovation)
-        distance = squared_distance(m, prediction.factor, innovation, gate.limit, solved)
+        distance = squared_distance(m, prediction.factor, innovation, solved)
         if not distance < gate.limit:
             continue
         clutter = models.clutter.intensity(models.clutter.parameters, scan.site, scan.detections[j])

@@ -49,6 +49,7 @@ class SensorModel(NamedTuple):
     periods: np.ndarray  # (m,) 2 pi for an angle that wraps, 0 for anything else
     region_centre: np.ndarray  # (m,) the box in which detections are reported
     region_half_width: np.ndarray  # (m,)
+    linear: bool = False  # the jacobian depends neither on the state nor on the site
 
 
 class DetectionModel(NamedTuple):

@@ -68,7 +68,7 @@ def _gather(
             continue
         for i in range(n):
             difference[i] = means[head, i] - means[h, i]
-        if squared_distance(n, factor, difference, limit, solved) < limit:
+        if squared_distance(n, factor, difference, solved) < limit:
             table[h].group = head
             table[head].group_weight += table[h].weight
 

@@ -80,6 +80,7 @@ class PositionSensor(Sensor):
             np.zeros(self.axes),
             centre,
             half_width,
+            linear=True,
         )
 
     @model_validator(mode="after")
