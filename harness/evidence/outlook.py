@@ -100,7 +100,7 @@ def _look_at(keyed: KeyedCondition, seed: int) -> ConditionOutlook:
     batch = draw_scenes(scene, numbers, 0, SCENES)
     strategy = KnownAssociation(kind="known-association")
     tracks = strategy.run(assumptions_of(scene), batch.scans, numbers, 0)
-    scores = score_span(batch, tracks, tracks, keyed.rules)
+    scores = score_span(batch.truth, tracks, tracks, keyed.rules)
     return ConditionOutlook(
         keyed.label,
         len(batch.scans.detections) / batch.scans.origins.size,

@@ -16,6 +16,10 @@ class Truth(NamedTuple):
     outside: np.ndarray  # (trials, scans) bool: the measurement fell outside the sensor's region
     axes: int
 
+    def rows(self, rows: slice) -> Truth:
+        """The truth of some of the trials, without copying."""
+        return self._replace(states=self.states[rows], outside=self.outside[rows])
+
     @property
     def position(self) -> np.ndarray:
         """(trials, scans, axes) m."""

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from filters.track import Tracks
-from harness.scene.batch import SceneBatch
+from harness.scene.batch import Truth
 from harness.study.schema import Gospa, TrackLoss
 from metrics.consistency import nees, squared_mahalanobis
 from metrics.gospa import single_target_gospa
@@ -90,13 +90,13 @@ def loss_limit(rules: TrackLoss, reference: Tracks | None, axes: int) -> np.ndar
 
 
 def score_span(
-    batch: SceneBatch, tracks: Tracks, reference: Tracks | None, rules: ScoringRules
+    truth: Truth, tracks: Tracks, reference: Tracks | None, rules: ScoringRules
 ) -> SpanScores:
     """Compare a strategy's tracks with the truth.
 
     reference   known association's tracks of the same scenes, where the rules need them
     """
-    truth, axes = batch.truth, batch.truth.axes
+    axes = truth.axes
     failed = failed_trials(tracks)
     present = tracks.present & ~failed[:, None]
     estimate = tracks.means[..., : 2 * axes]  # NaN where there is none

@@ -8,19 +8,21 @@ from __future__ import annotations
 
 import time
 import traceback
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 from filters.compiled import raising_what_compiled_code_raised
 from filters.random_numbers import Numbers, numbers_of
 from filters.strategies.gaussian import KnownAssociation
 from filters.strategies.strategy import Assumptions, Strategy
-from filters.track import Tracks
+from filters.track import Tracks, tracks_of
 from harness.scene.batch import SceneBatch
 from harness.scene.simulate import draw_scenes, models_of, prior_of
 from harness.study.schema import Scene
 from harness.trials.score import ScoringRules, SpanScores, score_span
 
 SPAN = 100
+_SCANS_PER_BATCH = 50_000
 
 
 @dataclass(frozen=True)
@@ -94,14 +96,43 @@ def run_task(task: Task) -> list[SpanResult]:
     numbers = numbers_of(task.seed)
     results = []
     with raising_what_compiled_code_raised():
-        for span in task.spans:
-            batch = draw_scenes(task.scene, numbers, span.first_trial, span.trials)
+        for spans in _batches(task):
+            trials = sum(span.trials for span in spans)
+            batch = draw_scenes(task.scene, numbers, spans[0].first_trial, trials)
             reference = _reference(task, batch, numbers)
             for case in task.cases:
                 tracks, us_per_scan = _run_case(case, batch, numbers)
-                scores = score_span(batch, tracks, reference, task.rules)
-                results.append(SpanResult(case.key, span, scores, us_per_scan))
+                for span in spans:
+                    rows = _rows_of(span, batch)
+                    scores = score_span(
+                        batch.truth.rows(rows),
+                        tracks_of(tracks, rows),
+                        None if reference is None else tracks_of(reference, rows),
+                        task.rules,
+                    )
+                    results.append(SpanResult(case.key, span, scores, us_per_scan))
     return results
+
+
+def _batches(task: Task) -> Iterator[list[Span]]:
+    """Runs of consecutive spans that go through the kernels together.
+
+    A call of a kernel costs half a millisecond, so it should serve many trials; but their estimates
+    should stay small enough for the caches.
+    """
+    most = max(1, _SCANS_PER_BATCH // (SPAN * task.scene.scans))
+    batch: list[Span] = []
+    for span in task.spans:
+        if batch and (len(batch) == most or span.number != batch[-1].number + 1):
+            yield batch
+            batch = []
+        batch.append(span)
+    yield batch
+
+
+def _rows_of(span: Span, batch: SceneBatch) -> slice:
+    start = span.first_trial - batch.first_trial
+    return slice(start, start + span.trials)
 
 
 def run_task_safely(task: Task) -> list[SpanResult] | TaskFailure:

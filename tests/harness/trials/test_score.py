@@ -27,7 +27,7 @@ def perfect(batch):
 
 
 def test_a_perfect_track_has_no_error(batch, perfect, make_task):
-    scores = score_span(batch, perfect, None, make_task().rules)
+    scores = score_span(batch.truth, perfect, None, make_task().rules)
     assert np.all(scores.lost_at == -1)
     assert np.all(scores.position_square == 0)
     assert np.all(scores.gospa_localisation + scores.gospa_missed + scores.gospa_false == 0)
@@ -38,7 +38,7 @@ def test_a_perfect_track_has_no_error(batch, perfect, make_task):
 
 def test_a_lost_trial_enters_no_sum_over_scans_but_its_own_row(batch, perfect, make_task):
     perfect.means[2, 5:, 0] += 1000.0
-    scores = score_span(batch, perfect, None, make_task().rules)
+    scores = score_span(batch.truth, perfect, None, make_task().rules)
     assert scores.lost_at.tolist() == [-1, -1, 5, -1, -1, -1]
     assert np.all(scores.scan_estimates == 5)
     assert np.all(scores.scan_position_square == 0)
@@ -53,7 +53,7 @@ def test_no_track_counts_as_missed_and_as_lost(batch, perfect, make_task):
     perfect.present[1, 4:] = False
     perfect.means[1, 4:] = np.nan
     perfect.covariances[1, 4:] = np.nan
-    scores = score_span(batch, perfect, None, make_task().rules)
+    scores = score_span(batch.truth, perfect, None, make_task().rules)
     assert scores.lost_at[1] == 4
     assert scores.estimates[1] == 3
     assert scores.position_square[1] == 0
@@ -73,7 +73,7 @@ def test_no_track_counts_as_missed_and_as_lost(batch, perfect, make_task):
 def test_a_failed_trial_is_not_lost_and_enters_nothing(spoil, batch, perfect, make_task):
     spoil(perfect)
     assert failed_trials(perfect).tolist() == [False, False, False, True, False, False]
-    scores = score_span(batch, perfect, None, make_task().rules)
+    scores = score_span(batch.truth, perfect, None, make_task().rules)
     assert scores.failed[3]
     assert scores.lost_at[3] == -1
     assert np.isnan(scores.position_square[3])
