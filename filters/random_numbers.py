@@ -121,8 +121,10 @@ def exponential(numbers: Numbers) -> float:
 def _ziggurat() -> tuple[np.ndarray, np.ndarray]:
     """Cover exp(-x^2 / 2), x > 0, by layers of equal area, from the bottom up.
 
-    returns     right edge of each layer (256,), that of the lowest as if it had no tail, and a last
-                one of 0; height of the curve there
+    returns     right edge of each layer, that of the lowest as wide as its area without a tail, and
+                a last one of 0 (257,); height of the curve there (257,)
+    source      Marsaglia and Tsang (2000), Journal of Statistical Software 5(8), The ziggurat method
+                for generating random variables
     """
     area = _TAIL * math.exp(-0.5 * _TAIL**2)
     area += math.sqrt(math.pi / 2) * math.erfc(_TAIL / math.sqrt(2))
@@ -152,13 +154,12 @@ def _beyond(numbers: Numbers) -> float:
 
 @helper
 def normal(numbers: Numbers) -> float:
-    """Next number, standard normal."""
+    """Next number, standard normal; layer and place in it come from different bits of a word."""
     while True:
         word = _next_word(numbers)
         layer = int(word & _BYTE)
         value = (2.0 * float(word >> _11) * _TO_UNIT - 1.0) * _EDGES[layer]
-        size = abs(value)
-        if size < _EDGES[layer + 1]:  # under the curve whatever the height, 99 times in 100
+        if abs(value) < _EDGES[layer + 1]:  # under the curve whatever the height, 99 times in 100
             return value
         if layer == 0:
             return math.copysign(_beyond(numbers), value)

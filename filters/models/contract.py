@@ -43,7 +43,7 @@ class SensorModel(NamedTuple):
     measure: Callable[..., Any]  # MEASUREMENT_OF: expected measurement, (m,)
     jacobian: Callable[..., Any]  # MEASUREMENT_MATRIX: d measure / d state, (m, n)
     noise: Callable[..., Any]  # MEASUREMENT_MATRIX: covariance of the noise, (m, m)
-    same_noise: bool  # the noise does not depend on the state
+    same_noise: bool  # the noise depends neither on the state nor on the site
     parameters: np.ndarray  # (any,)
     sites: np.ndarray  # (scans, 2 * axes) m and m/s; or (1, 2 * axes) for a fixed sensor
     periods: np.ndarray  # (m,) 2 pi for an angle that wraps, 0 for anything else
