@@ -123,8 +123,8 @@ def _ziggurat() -> tuple[np.ndarray, np.ndarray]:
 
     returns     right edge of each layer, that of the lowest as wide as its area without a tail, and
                 a last one of 0 (257,); height of the curve there (257,)
-    source      Marsaglia and Tsang (2000), Journal of Statistical Software 5(8), The ziggurat method
-                for generating random variables
+    source      Marsaglia and Tsang (2000), Journal of Statistical Software 5(8), The ziggurat
+                method for generating random variables
     """
     area = _TAIL * math.exp(-0.5 * _TAIL**2)
     area += math.sqrt(math.pi / 2) * math.erfc(_TAIL / math.sqrt(2))
