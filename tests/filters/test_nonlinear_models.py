@@ -18,6 +18,7 @@ from small_worlds import (
     particle_filter,
     pda,
     run_on,
+    skipping_nothing,
 )
 
 from filters.models.motion import CoordinatedTurn, NearlyConstantVelocity
@@ -234,6 +235,19 @@ def test_turning_the_world_by_180_degrees_turns_the_estimates(strategy):
     expected = run_on(world, STRATEGIES[strategy], as_scans(trials, 2))
     np.testing.assert_allclose(found.means, -expected.means, rtol=1e-9, atol=1e-9)
     np.testing.assert_allclose(found.covariances, expected.covariances, rtol=1e-8, atol=1e-9)
+
+
+@pytest.mark.parametrize("distance", [5.0, 30.0, 200.0])
+def test_skipping_far_detections_changes_no_bit_among_angles(distance):
+    """Clouds around the site, across the cut, and clear of both; detections in all directions."""
+    rng = np.random.default_rng(int(distance))
+    world = straight_world((-distance, 3.0), (-1.0, 0.0))
+    ends = [[0.0, -math.pi], [2.0 * distance, math.pi]]
+    scans = as_scans([[rng.uniform(*ends, (60, 2)) for _ in range(4)] for _ in range(6)], 2)
+    strategy = particle_filter(particles=200)
+    found, expected = (run_on(w, strategy, scans) for w in (world, skipping_nothing(world)))
+    np.testing.assert_array_equal(found.means, expected.means)
+    np.testing.assert_array_equal(found.covariances, expected.covariances)
 
 
 def test_a_prediction_right_on_the_site_has_no_bearing_and_is_kept():

@@ -14,9 +14,9 @@ from small_worlds import (
     particle_filter,
     random_walk_world,
     run_on,
+    skipping_nothing,
 )
 
-from filters.models.contract import Models
 from filters.particle_filter import ParticleStrategy, cloud_for, compiled_particle_filter
 from filters.random_numbers import numbers_of
 from filters.strategies.strategy import gate_of
@@ -92,13 +92,13 @@ def test_in_the_plane_particles_come_to_the_unreduced_mixture():
     assert np.all(np.abs(offset.mean(axis=0)) < 4.5 * standard_error + 0.01)
 
 
-def cloud_after(world, scan, particles=400, models=None):
+def cloud_after(world, scan, particles=400):
     """States and weights of particles after one scan, before any resampling."""
     scans = as_scans([[scan]], 1)
     cloud = cloud_for(2, 1, particles, scans.most_detections)
     tracks = room_for_tracks(scans, 2)
     compiled_particle_filter(2, 1)(
-        models or world.assumptions.models,
+        world.assumptions.models,
         ParticleStrategy(particles, 0.0, gate_of(1.0, 1), Ending(0, math.inf, 1)),
         world.assumptions.prior,
         scans,
@@ -177,19 +177,13 @@ def test_weights_are_the_likelihoods_of_numpy(scan, PD, clutter, noise_sd):
     )
 
 
-def looking_at_every_detection(models: Models) -> Models:
-    """The same models, said to have noise that varies with the state: then nothing is skipped."""
-    return models._replace(sensor=models.sensor._replace(same_noise=False))
-
-
 @pytest.mark.parametrize(
     "scan", [[1.0, 40.0, -25.0, 300.0], list(np.linspace(-40, 40, 400)), [90.0]]
 )
 def test_skipping_far_detections_changes_no_bit(scan):
     world = constant_velocity_world()
     _, weights, tracks = cloud_after(world, scan)
-    every = looking_at_every_detection(world.assumptions.models)
-    _, expected, all_tracks = cloud_after(world, scan, models=every)
+    _, expected, all_tracks = cloud_after(skipping_nothing(world), scan)
     np.testing.assert_array_equal(weights, expected)
     np.testing.assert_array_equal(tracks.means, all_tracks.means)
 
@@ -199,9 +193,7 @@ def test_skipping_changes_no_bit_of_whole_runs():
     drawn = draw_scenes_of(world, np.random.default_rng(5), 3, 15, clutter_half_width=60.0)
     scans = as_scans(drawn.trials, 2)
     strategy = particle_filter(particles=300)
-    every = looking_at_every_detection(world.assumptions.models)
-    patient = world._replace(assumptions=world.assumptions._replace(models=every))
-    found, expected = run_on(world, strategy, scans), run_on(patient, strategy, scans)
+    found, expected = (run_on(w, strategy, scans) for w in (world, skipping_nothing(world)))
     np.testing.assert_array_equal(found.means, expected.means)
     np.testing.assert_array_equal(found.covariances, expected.covariances)
 

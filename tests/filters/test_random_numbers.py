@@ -2,7 +2,7 @@
 
 import numpy as np
 import pytest
-from scipy.stats import kstest
+from scipy.stats import binomtest, chi2, kstest, norm
 
 from filters.compiled import kernel
 from filters.random_numbers import (
@@ -128,7 +128,7 @@ def test_exponential_numbers_are_exponential():
 def test_normal_numbers_are_standard_normal_and_independent(count):
     """Kolmogorov-Smirnov on each place of 10,000 vectors, correlations within 4.5 / sqrt(N).
 
-    Squares are compared too: the two of a pair share a radius. By chance once in 5,000 for all.
+    Correlations of squares are compared too. By chance once in 5,000 for all.
     """
     out = np.empty((10_000, count))
     draw_normals(numbers_of(77), 0, NOISE, 0, count, out)
@@ -137,6 +137,28 @@ def test_normal_numbers_are_standard_normal_and_independent(count):
     for values in (out, out**2):
         correlation = np.atleast_2d(np.corrcoef(values, rowvar=False)) - np.eye(count)
         assert np.abs(correlation).max() < 4.5 / np.sqrt(len(out))
+
+
+def test_two_million_normal_numbers_fill_every_part_of_the_bell():
+    """400 equally likely bins and, beyond 3, 3.65, 4 and 4.5, both tails; level 1e-5 each.
+
+    Signs, sizes and neighbours are uncorrelated within 4.5 / sqrt(N).
+    """
+    out = np.empty((2_000_000, 1))
+    draw_normals(numbers_of(7), 3, MOTION, 2, 1, out)
+    values = out[:, 0]
+    observed, _ = np.histogram(norm.cdf(values), np.linspace(0, 1, 401))
+    expected = len(values) / 400
+    assert chi2.sf(np.sum((observed - expected) ** 2) / expected, 399) > 1e-5
+    for limit in (3.0, 3.65, 4.0, 4.5):
+        for tail in (values > limit, values < -limit):
+            assert binomtest(int(tail.sum()), len(values), norm.sf(limit)).pvalue > 1e-5
+    beyond = np.abs(values[np.abs(values) > 3.65])
+    assert kstest(norm.sf(beyond) / norm.sf(3.65), "uniform").pvalue > 1e-5
+    limit = 4.5 / np.sqrt(len(values))
+    assert abs(np.corrcoef(np.sign(values), np.abs(values))[0, 1]) < limit
+    assert abs(np.corrcoef(values[1:], values[:-1])[0, 1]) < limit
+    assert abs(np.corrcoef(np.abs(values[1:]), np.abs(values[:-1]))[0, 1]) < limit
 
 
 def test_normal_numbers_leave_what_lies_behind_their_count_alone():

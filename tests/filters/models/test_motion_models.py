@@ -233,7 +233,7 @@ def test_the_factors_of_the_arc_meet_where_the_series_takes_over():
 
 
 def test_the_noise_of_a_turn_is_that_of_white_acceleration_and_a_walk_of_the_rate():
-    """Source: Bar-Shalom, Li and Kirubarajan (2001), section 11.7, nearly coordinated turn."""
+    """Common practice: the noise of straight motion, though the arc would bend it a little."""
     found = matrix(turn_noise, [0.3, 1e-4], 1.7, np.zeros(5))
     plane = matrix(white_acceleration_noise, [2, 0.3], 1.7, np.zeros(4))
     np.testing.assert_allclose(found[:4, :4], plane, rtol=1e-14)

@@ -179,6 +179,13 @@ def held_acceleration_world(
     return _world(target, F, Q, noise_sd, detection_probability, clutter)
 
 
+def skipping_nothing(world):
+    """The same world, its noise said to vary with the state: no detection can then be left out."""
+    models = world.assumptions.models
+    models = models._replace(sensor=models.sensor._replace(same_noise=False))
+    return world._replace(assumptions=world.assumptions._replace(models=models))
+
+
 @model_function(STATE_AFTER)
 def stand_still(parameters, interval, state, out):
     for i in range(state.shape[0]):
