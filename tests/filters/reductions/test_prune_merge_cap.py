@@ -4,7 +4,7 @@ import numpy as np
 import pytest
 from hypothesis import assume, given, settings
 from hypothesis import strategies as st
-from plain_filters import Hypothesis, hypotheses_of, moments, predict, prune_merge_cap
+from plain_filters import Hypothesis, hypotheses_of, moments, predict, prune_merge_cap, run
 from small_worlds import (
     as_scans,
     constant_velocity_world,
@@ -98,6 +98,24 @@ def test_a_run_of_scans_is_that_of_the_definition(axes, limits):
         tracks = run_on(world, heaviest, as_scans([scans], axes))
         np.testing.assert_allclose(tracks.means[0, -1], mixture[0][1], rtol=1e-9, atol=1e-9)
         np.testing.assert_allclose(tracks.covariances[0, -1], mixture[0][2], rtol=1e-9, atol=1e-9)
+
+
+@pytest.mark.parametrize(("PD", "clutter"), [(1.0, 0.1), (0.9, 0.0), (1.0, 0.0)])
+def test_several_components_keep_to_the_limits_of_the_model(PD, clutter):
+    """Certain detection and no clutter, assumed of scans in which the gates are empty at times."""
+    world = constant_velocity_world(1, clutter=0.15)
+    drawn = draw_scenes_of(world, np.random.default_rng(44), 12, 8, clutter_half_width=8.0)
+    assumed = constant_velocity_world(1, detection_probability=PD, clutter=clutter)
+    reduce = prune_merge_cap(1e-3, 0.5, 6)
+    strategy = gaussian_mixture(
+        gate_probability=0.9, prune_below=1e-3, merge_below=0.5, max_components=6
+    )
+    tracks = run_on(assumed, strategy, as_scans(drawn.trials, 1))
+    for trial, scans in enumerate(drawn.trials):
+        means, covariances = run(assumed.plain, scans, reduce, 0.9)
+        np.testing.assert_allclose(tracks.means[trial], means, rtol=1e-8, atol=1e-8)
+        np.testing.assert_allclose(tracks.covariances[trial], covariances, rtol=1e-7, atol=1e-9)
+    assert (tracks.impossible.sum() > 0) == (PD == 1.0)
 
 
 def test_merging_keeps_mean_and_covariance():
