@@ -3,7 +3,7 @@ PYTHON ?= python3
 BIN := .venv/bin
 STUDY ?= studies/harbour_approach.toml
 
-.PHONY: study test lint bench clean
+.PHONY: study test lint bench pictures clean
 
 study: .venv/run-ready
 	$(BIN)/trackassay run $(STUDY)
@@ -19,6 +19,14 @@ lint: .venv/lint-ready
 
 bench: .venv/test-ready
 	$(BIN)/python tests/benchmarks/bench.py
+
+# The README's pictures, from the studies that ship.
+pictures: .venv/run-ready
+	$(BIN)/trackassay run studies/harbour_approach.toml
+	$(BIN)/trackassay run studies/dense_clutter.toml
+	mkdir -p studies/pictures
+	cp results/harbour_approach/figures/track_loss_over_clutter_density.svg results/harbour_approach/figures/over_time.svg studies/pictures/
+	cp results/dense_clutter/figures/track_loss_over_clutter_density.svg studies/pictures/dense_track_loss.svg
 
 clean:
 	rm -rf .venv build *.egg-info
