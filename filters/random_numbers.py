@@ -31,8 +31,9 @@ _TAIL = 3.6541528853610088  # where the lowest layer's tail begins, so that the 
 _ROUNDS = 10
 _TO_UNIT = 2.0**-53
 
-# Purposes
-START, MOTION, DETECTION, NOISE, CLUTTER, STRATEGY = range(6)
+# Purposes. Numbers of one purpose are split further by adding a multiple of SPLIT.
+START, MOTION, DETECTION, NOISE, CLUTTER, STRATEGY, CLUTTER_LEVEL, PERSISTENT_CLUTTER = range(8)
+SPLIT = 16
 
 
 class Numbers(NamedTuple):

@@ -60,11 +60,16 @@ class DetectionModel(NamedTuple):
 
 
 class ClutterModel(NamedTuple):
-    """Intensity of the Poisson process of false detections, per scan and unit of measurement."""
+    """Intensity of the Poisson process of false detections, per scan and unit of measurement.
+
+    It is drawn as a sum of processes: one in each box of a partition of the region, and one of each
+    bump. A box's bound is at least the intensity in it, but for what the bumps add.
+    """
 
     intensity: Callable[..., Any]  # SCALAR_OF (parameters, site, measurement)
     parameters: np.ndarray
-    highest: float  # upper bound of the intensity over the region
+    boxes: np.ndarray  # (any, 2 m + 1) centre, half width, and the bound of the intensity
+    bumps: np.ndarray  # (any, 2 m + 1) centre and standard deviation of a Gaussian, and its number
 
 
 class Models(NamedTuple):

@@ -5,9 +5,11 @@ Numbers are strict: a study file that says `true` or `"3"` where a number belong
 
 from __future__ import annotations
 
-from typing import Annotated
+from collections.abc import Iterator
+from contextlib import contextmanager
+from typing import Annotated, Self
 
-from pydantic import BaseModel, ConfigDict, Field
+from pydantic import BaseModel, ConfigDict, Field, model_validator
 
 Real = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Positive = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0.0)]
@@ -15,6 +17,9 @@ NonNegative = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0.0)]
 Probability = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0.0, le=1.0)]
 Count = Annotated[int, Field(strict=True, ge=1, le=1_000_000_000)]
 Interval = tuple[Real, Real]
+PerAxis = tuple[Real, ...]
+
+Ways = tuple[tuple[str, ...], ...]  # ways to state one thing, each by some keys
 
 
 class BadValue(ValueError):
@@ -33,6 +38,15 @@ class BadValue(ValueError):
         return f"{self.key} {self.rule}; {self.remedy}"
 
 
+@contextmanager
+def within(key: str) -> Iterator[None]:
+    """Name what is found wrong inside a record that stands under a key."""
+    try:
+        yield
+    except BadValue as wrong:
+        raise BadValue(f"{key}.{wrong.key}", wrong.rule, wrong.remedy) from None
+
+
 class Record(BaseModel):
     """Frozen parameters, checked once; unknown keys are mistakes.
 
@@ -40,3 +54,31 @@ class Record(BaseModel):
     """
 
     model_config = ConfigDict(frozen=True, extra="forbid", use_attribute_docstrings=True)
+
+    @classmethod
+    def alternatives(cls) -> tuple[Ways, ...]:
+        """Things that can be stated in one of several ways; the ways of each."""
+        return ()
+
+    @classmethod
+    def other_ways(cls, key: str) -> list[str]:
+        """Return the keys that state in another way what this key states."""
+        return [
+            other
+            for ways in cls.alternatives()
+            if any(key in way for way in ways)
+            for way in ways
+            if key not in way
+            for other in way
+        ]
+
+    @model_validator(mode="after")
+    def _states_each_thing_in_one_way(self) -> Self:
+        for ways in self.alternatives():
+            stated = [key for way in ways for key in way if getattr(self, key) is not None]
+            rivals = [key for key in stated if key in self.other_ways(stated[0])]
+            if rivals:
+                raise BadValue(
+                    stated[0], f"says the same as {' and '.join(rivals)}", "keep one of them"
+                )
+        return self

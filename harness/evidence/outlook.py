@@ -17,7 +17,9 @@ from filters.strategies.gaussian import GatedStrategy, KnownAssociation
 from filters.track import Tracks
 from harness.evidence.plans import KeyedCondition, keyed_conditions
 from harness.scene.batch import SceneBatch
-from harness.scene.simulate import draw_scenes, models_of
+from harness.scene.models import models_of
+from harness.scene.simulate import draw_scenes
+from harness.study.schema import Scene
 from harness.study.study import Study
 from harness.trials.score import score_span
 from harness.trials.task import assumptions_of
@@ -158,7 +160,7 @@ def outlook_text(outlook: Outlook) -> str:
             ("cases", f"{cases:,}"),
             ("trials", f"{study.trials:,} a condition: {scenes:,} scenes, "
                        f"{cases * study.trials:,} runs of a strategy"),
-            ("scans", f"{scene.scans:,}, {scene.scan_interval_s:g} s apart"),
+            ("scans", _scan_words(scene)),
         ]
     )  # fmt: skip
     lines += ["", f"From {SCENES} scenes of each condition" + _which(seen, study) + ":"]
@@ -192,6 +194,13 @@ def _aligned(rows: Sequence[tuple[str, str]]) -> list[str]:
 def _span(values: Sequence[float], unit: str = "") -> str:
     low, high = f"{min(values):.3g}", f"{max(values):.3g}"
     return f"{low}{unit}" if low == high else f"{low} to {high}{unit}"
+
+
+def _scan_words(scene: Scene) -> str:
+    if scene.scan_interval_s is not None:
+        return f"{scene.scan_count:,}, {scene.scan_interval_s:g} s apart"
+    times = scene.scan_times()
+    return f"{len(times):,}, at stated times from {times[0]:g} to {times[-1]:g} s"
 
 
 def _sweep_words(study: Study) -> str:

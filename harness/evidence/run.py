@@ -69,7 +69,7 @@ def _summarise(
                 "best_in": " ".join(best.get(case.name, [])),
             }
             summary.append({**settings, **row, **chosen})
-            times = condition.rules.scene.scan_intervals().cumsum()
+            times = condition.rules.scene.scan_times()
             scans.append(_with_settings(settings, scan_rows(scored[case.name], times)))
     return pd.DataFrame(summary), pd.concat(scans, ignore_index=True) if scans else pd.DataFrame()
 

@@ -7,7 +7,6 @@ from typing import Any
 
 from pydantic import ValidationError
 
-from filters.models.motion.target import Target
 from filters.models.sensor.sensor import Sensor
 from harness.study.keys import ASSUMABLE, FACTOR, Choice, Table, assumable_tables, is_numeric
 from harness.study.mistakes import Finding, Findings, KeyPath, value_text
@@ -84,7 +83,7 @@ def _overlaid(record: Any, stated: Mapping[str, Any], role: str, base: KeyPath) 
         return dict(stated)  # the check says that there is no such kind
     laid = {key: value for key, value in record if value is not None and key in table.fields}
     for key in stated:
-        for rival in _other_ways(table.record, key):
+        for rival in table.record.other_ways(key):
             laid.pop(rival, None)
     for key, value in stated.items():
         laid[key] = value
@@ -94,19 +93,6 @@ def _overlaid(record: Any, stated: Mapping[str, Any], role: str, base: KeyPath) 
                 raise Findings([_nothing_to_multiply(record, key, (*base, role, key, "factor"))])
             laid[key] = _multiplied(own, value["factor"])
     return laid
-
-
-def _other_ways(record: type, key: str) -> list[str]:
-    """Return the keys that say the same as this one in another way."""
-    if issubclass(record, Sensor):
-        clutter = (*record.density_keys, "clutter_per_scan")
-        return [other for other in clutter if key in clutter and other != key]
-    if issubclass(record, Target):
-        spreads = ["start_position_sd_m", "start_velocity_sd_m_per_s", *record.further_spreads]
-        if key == "start_covariance":
-            return spreads
-        return ["start_covariance"] if key in spreads else []
-    return []
 
 
 def _multiplied(value: Any, factor: float) -> Any:
@@ -138,7 +124,7 @@ def _measured(sensor: Sensor) -> tuple[list[str], int]:
 
 
 def _nothing_to_multiply(record: Any, key: str, path: KeyPath) -> Finding:
-    stated = [way for way in _other_ways(type(record), key) if getattr(record, way) is not None]
+    stated = [way for way in type(record).other_ways(key) if getattr(record, way) is not None]
     remedy = f"multiply {stated[0]}, which it states" if stated else f"give {key} itself"
     return Finding(path, f"has nothing to multiply: the scene states no {key}", remedy)
 

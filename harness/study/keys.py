@@ -8,9 +8,10 @@ from dataclasses import dataclass
 from types import NoneType, UnionType
 from typing import Annotated, Any, Literal, Union, get_args, get_origin
 
-from pydantic import BaseModel, Discriminator, Tag
+from pydantic import Discriminator, Tag
 from pydantic.fields import FieldInfo
 
+from filters.models.record import Record
 from filters.strategies.strategy import Strategy
 from harness.study.mistakes import KeyPath
 from harness.study.schema import Scene, StudyDocument
@@ -45,7 +46,7 @@ class Named:
 class Table:
     """A table with the fields of a record."""
 
-    record: type[BaseModel]
+    record: type[Record]
 
     @property
     def fields(self) -> Mapping[str, Node]:
@@ -97,7 +98,7 @@ def node_of(annotation: Any, notes: tuple[Any, ...] = ()) -> Node:
         entries = get_args(annotation)
         is_fixed = origin is tuple and entries[-1] is not Ellipsis
         return Row(node_of(entries[0]), len(entries) if is_fixed else None)
-    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+    if isinstance(annotation, type) and issubclass(annotation, Record):
         return Table(annotation)
     limits = [note.metadata if isinstance(note, FieldInfo) else [note] for note in notes]
     return Leaf(annotation, tuple(limit for some in limits for limit in some))
@@ -191,7 +192,7 @@ def assumable_tables(role: str, assumes: Any, scene: Any) -> list[Table]:
 
 
 @functools.cache
-def _fields_of(record: type[BaseModel]) -> Mapping[str, Node]:
+def _fields_of(record: type[Record]) -> Mapping[str, Node]:
     return {
         info.alias or name: node_of(info.annotation, (info,))
         for name, info in record.model_fields.items()

@@ -9,11 +9,13 @@ from pydantic import Discriminator, Field, Tag, model_validator
 
 from filters.models.motion import MOTIONS
 from filters.models.motion.target import Target
-from filters.models.record import BadValue, Count, Positive, Record
+from filters.models.record import BadValue, Count, Positive, Real, Record, Ways, within
 from filters.models.sensor import SENSORS
 from filters.models.sensor.sensor import Sensor
 from filters.strategies import STRATEGIES
 from filters.strategies.strategy import Strategy
+from harness.study.legs import AnyLeg, check_legs
+from harness.study.unmodelled import Unmodelled
 
 if TYPE_CHECKING:
     AnyTarget = Target
@@ -26,7 +28,8 @@ else:  # unions over whatever the catalogues hold
 
 Seed = Annotated[int, Field(strict=True, ge=0, lt=2**63)]
 Trials = Annotated[int, Field(strict=True, ge=1, le=100_000_000)]
-ScanCount = Annotated[int, Field(strict=True, ge=1, le=100_000)]
+MOST_SCANS = 100_000
+ScanCount = Annotated[int, Field(strict=True, ge=1, le=MOST_SCANS)]
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Order = Annotated[float, Field(strict=True, ge=1.0, allow_inf_nan=False)]
 Text = Annotated[str, Field(strict=True)]
@@ -37,20 +40,74 @@ StrategyName = Annotated[str, Field(strict=True, pattern=r"^[A-Za-z0-9][A-Za-z0-
 class Scene(Record):
     """Target, sensor and scans; a strategy's assumptions mirror it."""
 
-    scans: ScanCount
+    scans: ScanCount | None = None
     """Number of scans of a trial."""
-    scan_interval_s: Positive
+    scan_interval_s: Positive | None = None
     """Time from one scan to the next, s."""
+    scan_times_s: Annotated[tuple[Real, ...], Field(min_length=1, max_length=MOST_SCANS)] | None = (
+        None
+    )
+    """Time of each scan, s, in place of their number and interval; the prior holds at the first."""
     target: AnyTarget
     """How the target starts and moves."""
     sensor: AnySensor
     """What is measured of the target, and the clutter."""
+    legs: Annotated[tuple[AnyLeg, ...], Field(min_length=1)] | None = None
+    """Path of the true target, the same in every trial: legs one after the other from the start's
+    mean position and velocity, then straight on. Strategies are told the target's motion."""
+    unmodelled: Unmodelled = Unmodelled()
+    """What is true of the scene but told to no strategy."""
+
+    @classmethod
+    def alternatives(cls) -> tuple[Ways, ...]:
+        """The scans are stated in one of two ways."""
+        return (*super().alternatives(), (("scans", "scan_interval_s"), ("scan_times_s",)))
+
+    @property
+    def scan_count(self) -> int:
+        """Number of scans of a trial."""
+        return len(self.scan_times_s or ()) or self.scans or 0
+
+    def scan_times(self) -> np.ndarray:
+        """When each scan is, (scans,) s."""
+        if self.scan_times_s is not None:
+            return np.array(self.scan_times_s, float)
+        assert self.scans is not None
+        assert self.scan_interval_s is not None
+        return self.scan_interval_s * np.arange(self.scans)
 
     def scan_intervals(self) -> np.ndarray:
         """Seconds before each scan, (scans,); the first is zero."""
-        intervals = np.full(self.scans, self.scan_interval_s)
+        if self.scan_times_s is not None:
+            return np.diff(self.scan_times(), prepend=self.scan_times_s[0])
+        intervals = np.full(self.scan_count, self.scan_interval_s)
         intervals[0] = 0.0
         return intervals
+
+    def with_first_scans(self, count: int) -> Scene:
+        """Return the scene with only its first scans."""
+        if self.scan_times_s is not None:
+            return self.model_copy(update={"scan_times_s": self.scan_times_s[:count]})
+        return self.model_copy(update={"scans": count})
+
+    @model_validator(mode="after")
+    def _scans_are_stated(self) -> Self:
+        times = self.scan_times_s
+        if times is None:
+            for key in ("scans", "scan_interval_s"):
+                if getattr(self, key) is None:
+                    raise BadValue(
+                        key,
+                        "is missing",
+                        "give it, or scan_times_s in place of scans and scan_interval_s",
+                    )
+            return self
+        for place in range(1, len(times)):
+            if not times[place - 1] < times[place]:
+                raise BadValue(
+                    f"scan_times_s[{place}]", "must be later than the one before", "order the times"
+                )
+        return self
 
     @model_validator(mode="after")
     def _target_and_sensor_share_their_axes(self) -> Self:
@@ -60,8 +117,22 @@ class Scene(Record):
             raise BadValue(
                 "target.start_position_m",
                 f"has {target.axes} entries but the sensor works along {sensor.axes} axes",
-                "give the target and the sensor's region the same number",
+                "give the target and the sensor's place or region the same number",
             )
+        return self
+
+    @model_validator(mode="after")
+    def _what_is_stated_fits_the_sensor(self) -> Self:
+        with within("sensor"):
+            self.sensor.check_times(self.scan_times())
+        with within("unmodelled"):
+            self.unmodelled.check(self.sensor.measurement_size)
+        return self
+
+    @model_validator(mode="after")
+    def _legs_can_be_flown(self) -> Self:
+        if self.legs is not None:
+            check_legs(self.legs, np.array(self.target.start_velocity_m_per_s, float))
         return self
 
 
@@ -161,14 +232,14 @@ class Rules(Record):
         """Index of the first scan that counts, from 0."""
         if self.scoring.from_scan is not None:
             return self.scoring.from_scan - 1
-        return self.scene.scans // 10
+        return self.scene.scan_count // 10
 
     @model_validator(mode="after")
     def _some_scans_count(self) -> Self:
-        if self.first_scored_scan() >= self.scene.scans:
+        if self.first_scored_scan() >= self.scene.scan_count:
             raise BadValue(
                 "scoring.from_scan",
-                f"must not exceed the {self.scene.scans} scans of the scene",
+                f"must not exceed the {self.scene.scan_count} scans of the scene",
                 "give an earlier scan or more scans",
             )
         return self

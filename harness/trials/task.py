@@ -17,7 +17,9 @@ from filters.strategies.gaussian import KnownAssociation
 from filters.strategies.strategy import Assumptions, Strategy
 from filters.track import Tracks, tracks_of
 from harness.scene.batch import SceneBatch
-from harness.scene.simulate import draw_scenes, models_of, prior_of
+from harness.scene.models import models_of
+from harness.scene.simulate import draw_scenes
+from harness.scene.truth import prior_of
 from harness.study.schema import Scene
 from harness.trials.score import ScoringRules, SpanScores, score_span
 

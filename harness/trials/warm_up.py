@@ -36,15 +36,16 @@ def warm_up(tasks: Iterable[Task], tell: Callable[[], None] = lambda: None) -> N
 
 
 def _models(scene: Scene) -> tuple[object, ...]:
-    return type(scene.target), scene.target.axes, type(scene.sensor)
+    sensor = scene.sensor
+    parts = (scene.target, sensor, sensor.detection, sensor.clutter)
+    return scene.target.axes, scene.legs is None, *map(type, parts)
 
 
 def _shortest(task: Task, case: TaskCase) -> Task:
-    scans = {"scans": 2}
-    short_case = replace(case, assumed=case.assumed.model_copy(update=scans))
+    short_case = replace(case, assumed=case.assumed.with_first_scans(2))
     return replace(
         task,
-        scene=task.scene.model_copy(update=scans),
+        scene=task.scene.with_first_scans(2),
         rules=replace(task.rules, first_scan=0),
         cases=(short_case,),
         spans=(Span(0, 1),),

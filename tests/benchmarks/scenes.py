@@ -12,7 +12,9 @@ from scipy.stats import chi2
 from filters.random_numbers import Numbers, numbers_of
 from filters.strategies.strategy import Assumptions
 from filters.track import Scans
-from harness.scene.simulate import draw_scenes, models_of, prior_of
+from harness.scene.models import models_of
+from harness.scene.simulate import draw_scenes
+from harness.scene.truth import prior_of
 from harness.study.schema import Scene
 
 SCANS = 100

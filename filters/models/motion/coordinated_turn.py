@@ -110,6 +110,15 @@ class CoordinatedTurn(Target):
         """Turn rate, rad/s."""
         return (math.radians(self.start_turn_rate_deg_per_s),)
 
+    def state_of(
+        self, position: np.ndarray, velocity: np.ndarray, acceleration: np.ndarray
+    ) -> np.ndarray:
+        """State of a target that moves like this, (n,) SI; one that stands still does not turn."""
+        across = velocity[0] * acceleration[1] - velocity[1] * acceleration[0]
+        square = velocity @ velocity
+        rate = across / square if square > 0.0 else 0.0
+        return np.array([*position, *velocity, rate])
+
     def state_units(self) -> np.ndarray:
         """Turn rates are degrees in the study file."""
         return np.array([1.0, 1.0, 1.0, 1.0, math.radians(1.0)])

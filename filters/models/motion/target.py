@@ -8,9 +8,8 @@ import numpy as np
 from pydantic import Field, model_validator
 
 from filters.models.contract import MotionModel
-from filters.models.record import BadValue, Positive, Real, Record
+from filters.models.record import BadValue, PerAxis, Positive, Record, Ways
 
-PerAxis = tuple[Real, ...]
 SpreadPerAxis = tuple[Positive, ...]
 
 
@@ -36,6 +35,11 @@ class Target(Record):
     # Keys of further standard deviations, in the order of the state behind the velocity.
     further_spreads: ClassVar[tuple[str, ...]] = ()
 
+    @classmethod
+    def alternatives(cls) -> tuple[Ways, ...]:
+        """The spread of the start is stated in one of two ways."""
+        return (*super().alternatives(), (cls._spread_keys(), ("start_covariance",)))
+
     @property
     def axes(self) -> int:
         """Number of spatial axes."""
@@ -53,6 +57,12 @@ class Target(Record):
     def state_units(self) -> np.ndarray:
         """SI units in one unit of the study file, per entry of the state (n,)."""
         return np.ones(self.state_size)
+
+    def state_of(
+        self, position: np.ndarray, velocity: np.ndarray, acceleration: np.ndarray
+    ) -> np.ndarray:
+        """State of a target that moves like this, (n,) SI; what that leaves open, as at scan 1."""
+        return np.array([*position, *velocity, *self.start_further()], float)
 
     def start_mean(self) -> np.ndarray:
         """Mean of the prior at scan 1, (n,) SI."""
@@ -75,8 +85,9 @@ class Target(Record):
         """Functions and parameters for the kernels."""
         raise NotImplementedError
 
-    def _spread_keys(self) -> tuple[str, ...]:
-        return ("start_position_sd_m", "start_velocity_sd_m_per_s", *self.further_spreads)
+    @classmethod
+    def _spread_keys(cls) -> tuple[str, ...]:
+        return ("start_position_sd_m", "start_velocity_sd_m_per_s", *cls.further_spreads)
 
     @model_validator(mode="after")
     def _sizes_agree(self) -> Self:
@@ -92,23 +103,17 @@ class Target(Record):
         return self
 
     @model_validator(mode="after")
-    def _one_spread_that_is_a_covariance(self) -> Self:
-        keys = self._spread_keys()
-        given = [key for key in keys if getattr(self, key) is not None]
-        if self.start_covariance is None:
-            missing = [key for key in keys if key not in given]
-            if missing:
-                raise BadValue(
-                    missing[0],
-                    "is missing",
-                    f"give {' and '.join(missing)}, or start_covariance in place of all spreads",
-                )
+    def _spread_is_a_covariance(self) -> Self:
+        if self.start_covariance is not None:
+            _check_covariance(self.start_covariance, self.state_size)
             return self
-        if given:
+        missing = [key for key in self._spread_keys() if getattr(self, key) is None]
+        if missing:
             raise BadValue(
-                given[0], "says the same as start_covariance", "keep one of the two ways"
+                missing[0],
+                "is missing",
+                f"give {' and '.join(missing)}, or start_covariance in place of all spreads",
             )
-        _check_covariance(self.start_covariance, self.state_size)
         return self
 
 

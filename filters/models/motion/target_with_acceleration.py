@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from typing import ClassVar
 
+import numpy as np
 from pydantic import Field
 
-from filters.models.motion.target import PerAxis, SpreadPerAxis, Target
+from filters.models.motion.target import SpreadPerAxis, Target
+from filters.models.record import PerAxis
 
 
 class TargetWithAcceleration(Target):
@@ -22,3 +24,9 @@ class TargetWithAcceleration(Target):
     def start_further(self) -> tuple[float, ...]:
         """Acceleration along each axis, m/s2."""
         return self.start_acceleration_m_per_s2
+
+    def state_of(
+        self, position: np.ndarray, velocity: np.ndarray, acceleration: np.ndarray
+    ) -> np.ndarray:
+        """State of a target that moves like this, (n,) SI."""
+        return np.concatenate([position, velocity, acceleration])

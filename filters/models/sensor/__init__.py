@@ -1,6 +1,17 @@
 """Sensors: what is measured of a target, with what noise, in which region."""
 
+from filters.models.sensor.bearing import BearingSensor
 from filters.models.sensor.position import PositionSensor
+from filters.models.sensor.range import RangeSensor
+from filters.models.sensor.range_azimuth_elevation import RangeAzimuthElevationSensor
 from filters.models.sensor.range_bearing import RangeBearingSensor
+from filters.models.sensor.range_bearing_range_rate import RangeBearingRangeRateSensor
 
-SENSORS = (PositionSensor, RangeBearingSensor)
+SENSORS = (
+    PositionSensor,
+    RangeSensor,
+    BearingSensor,
+    RangeBearingSensor,
+    RangeBearingRangeRateSensor,
+    RangeAzimuthElevationSensor,
+)

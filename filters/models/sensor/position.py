@@ -8,9 +8,11 @@ import numpy as np
 from pydantic import Field, model_validator
 
 from filters.compiled import model_function
-from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF, SensorModel
+from filters.models.clutter.clutter_map import MeasurementSpace
+from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF
+from filters.models.ends import check_ends
 from filters.models.record import BadValue, Interval, NonNegative, Positive
-from filters.models.sensor.sensor import Sensor, check_ends
+from filters.models.sensor.sensor import Sensor
 
 
 @model_function(MEASUREMENT_OF)
@@ -28,16 +30,11 @@ def position_jacobian(parameters: Any, site: Any, state: Any, out: Any) -> None:
         out[axis, axis] = 1.0
 
 
-@model_function(MEASUREMENT_MATRIX)
-def position_noise(parameters: Any, site: Any, state: Any, out: Any) -> None:
-    """R = sd^2 I."""
-    out[:] = 0.0
-    for axis in range(out.shape[0]):
-        out[axis, axis] = parameters[0] ** 2
-
-
 class PositionSensor(Sensor):
-    """Cartesian position with the same independent noise along each axis."""
+    """Cartesian position with the same independent noise along each axis.
+
+    Its place matters only to what changes with range.
+    """
 
     kind: Literal["position"]
     """Which sensor: Cartesian position along one to three axes."""
@@ -52,7 +49,11 @@ class PositionSensor(Sensor):
     clutter_density_per_m3: NonNegative | None = None
     """Expected false detections per scan and m3, on three axes."""
 
-    density_keys: ClassVar[tuple[str, ...]] = (
+    measure: ClassVar = position_of
+    jacobian: ClassVar = position_jacobian
+    linear: ClassVar = True
+    components: ClassVar = ()  # one for each axis; they share their keys
+    density_keys: ClassVar = (
         "clutter_density_per_m",
         "clutter_density_per_m2",
         "clutter_density_per_m3",
@@ -67,38 +68,36 @@ class PositionSensor(Sensor):
         """Lower and upper end along each axis, (axes, 2) m."""
         return np.array(self.region_m, float)
 
-    def sensor_model(self) -> SensorModel:
-        """Functions and parameters for the kernels."""
-        centre, half_width = self._box()
-        return SensorModel(
-            position_of.compiled,
-            position_jacobian.compiled,
-            position_noise.compiled,
-            True,
-            np.array([self.noise_sd_m]),
-            np.zeros((1, 2 * self.axes)),
-            np.zeros(self.axes),
-            centre,
-            half_width,
-            linear=True,
-        )
+    def units(self) -> np.ndarray:
+        """Metres."""
+        return np.ones(self.axes)
+
+    def periods(self) -> np.ndarray:
+        """Nothing wraps."""
+        return np.zeros(self.axes)
+
+    def noise_deviations(self) -> np.ndarray:
+        """The same along each axis, (axes,) m."""
+        return np.full(self.axes, self.noise_sd_m)
+
+    def measurement_space(self) -> MeasurementSpace:
+        """The space in which the target moves."""
+        return super().measurement_space()._replace(is_position=True)
 
     @model_validator(mode="after")
-    def _region_has_extent(self) -> Self:
+    def _region_has_extent_along_each_axis(self) -> Self:
         for axis, ends in enumerate(self.region_m):
             check_ends(f"region_m[{axis}]", ends, "m")
         return self
 
     @model_validator(mode="after")
     def _density_unit_fits_the_axes(self) -> Self:
-        if self.clutter_per_scan is not None:
-            return self
-        key, _ = self._given_density()
         right = self.density_keys[self.axes - 1]
-        if key != right:
-            raise BadValue(
-                key,
-                f"does not fit the number of axes of region_m, which is {self.axes}",
-                f"give {right} or clutter_per_scan",
-            )
+        for key in self.density_keys:
+            if key != right and getattr(self, key) is not None:
+                raise BadValue(
+                    key,
+                    f"does not fit the number of axes of region_m, which is {self.axes}",
+                    f"give {right} or clutter_per_scan",
+                )
         return self

@@ -1,4 +1,4 @@
-"""A sensor at any place in a plane that measures range and bearing.
+"""A sensor in a plane that measures range and bearing.
 
 The bearing runs counter-clockwise from the x axis and wraps at +-180 degrees.
 """
@@ -6,15 +6,12 @@ The bearing runs counter-clockwise from the x axis and wraps at +-180 degrees.
 from __future__ import annotations
 
 import math
-from typing import Any, ClassVar, Literal, Self
-
-import numpy as np
-from pydantic import model_validator
+from typing import Any, ClassVar, Literal
 
 from filters.compiled import model_function
-from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF, SensorModel
-from filters.models.record import BadValue, Interval, NonNegative, Positive
-from filters.models.sensor.sensor import Sensor, check_ends
+from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF
+from filters.models.record import Interval, NonNegative, Positive
+from filters.models.sensor.sensor import Sensor
 
 
 @model_function(MEASUREMENT_OF)
@@ -38,21 +35,11 @@ def range_and_bearing_jacobian(parameters: Any, site: Any, state: Any, out: Any)
     out[1, 1] = east / square
 
 
-@model_function(MEASUREMENT_MATRIX)
-def range_and_bearing_noise(parameters: Any, site: Any, state: Any, out: Any) -> None:
-    """R = diag(range sd^2, bearing sd^2)."""
-    out[:] = 0.0
-    out[0, 0] = parameters[0] ** 2
-    out[1, 1] = parameters[1] ** 2
-
-
 class RangeBearingSensor(Sensor):
-    """Range and bearing from a fixed site, with independent noise."""
+    """Range and bearing from a site, with independent noise."""
 
     kind: Literal["range-bearing"]
     """Which sensor: range and bearing in a plane."""
-    position_m: Interval = (0.0, 0.0)
-    """Where the sensor stands, m."""
     noise_sd_range_m: Positive
     """Standard deviation of the noise of the range, m."""
     noise_sd_bearing_deg: Positive
@@ -64,42 +51,12 @@ class RangeBearingSensor(Sensor):
     clutter_density_per_m_deg: NonNegative | None = None
     """Expected false detections per scan, m of range and degree of bearing."""
 
-    density_keys: ClassVar[tuple[str, ...]] = ("clutter_density_per_m_deg",)
+    measure: ClassVar = range_and_bearing
+    jacobian: ClassVar = range_and_bearing_jacobian
+    components: ClassVar = ("range_m", "bearing_deg")
+    density_keys: ClassVar = ("clutter_density_per_m_deg",)
 
     @property
     def axes(self) -> int:
-        """Number of spatial axes."""
+        """It works in a plane."""
         return 2
-
-    def region(self) -> np.ndarray:
-        """Ends of range in m and of bearing in rad, (2, 2)."""
-        return np.array([self.region_range_m, np.radians(self.region_bearing_deg)], float)
-
-    def density_unit(self) -> float:
-        """Intensity per m and rad of one per m and degree."""
-        return math.degrees(1.0)
-
-    def sensor_model(self) -> SensorModel:
-        """Functions and parameters for the kernels."""
-        centre, half_width = self._box()
-        return SensorModel(
-            range_and_bearing.compiled,
-            range_and_bearing_jacobian.compiled,
-            range_and_bearing_noise.compiled,
-            True,
-            np.array([self.noise_sd_range_m, math.radians(self.noise_sd_bearing_deg)]),
-            np.array([[*self.position_m, 0.0, 0.0]], float),
-            np.array([0.0, 2 * math.pi]),
-            centre,
-            half_width,
-        )
-
-    @model_validator(mode="after")
-    def _region_has_extent(self) -> Self:
-        check_ends("region_range_m", self.region_range_m, "m")
-        check_ends("region_bearing_deg", self.region_bearing_deg, "degrees")
-        if self.region_bearing_deg[1] - self.region_bearing_deg[0] > 360.0:
-            raise BadValue(
-                "region_bearing_deg", "must not span more than 360 degrees", "bring its ends closer"
-            )
-        return self

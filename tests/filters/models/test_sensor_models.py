@@ -10,12 +10,9 @@ from stonesoup.models.measurement.nonlinear import CartesianToBearingRange
 from stonesoup.types.state import State
 
 from filters.models.sensor import PositionSensor, RangeBearingSensor
-from filters.models.sensor.position import position_jacobian, position_noise, position_of
-from filters.models.sensor.range_bearing import (
-    range_and_bearing,
-    range_and_bearing_jacobian,
-    range_and_bearing_noise,
-)
+from filters.models.sensor.noise import independent_noise
+from filters.models.sensor.position import position_jacobian, position_of
+from filters.models.sensor.range_bearing import range_and_bearing, range_and_bearing_jacobian
 from filters.update import difference
 
 
@@ -98,13 +95,21 @@ def test_a_position_sensor_measures_the_leading_entries_of_the_state(axes):
     np.testing.assert_array_equal(measured(position_of, site, state, axes), state[:axes])
     H = matrix(position_jacobian, site, state, (axes, n))
     np.testing.assert_array_equal(H, np.eye(axes, n))
-    R = matrix(position_noise, site, state, (axes, axes), parameters=(3.0,))
+    sensor = PositionSensor(
+        kind="position",
+        noise_sd_m=3.0,
+        detection_probability=1.0,
+        clutter_per_scan=0.0,
+        region_m=((-10.0, 30.0),) * axes,
+    )
+    parameters = sensor.sensor_model(np.zeros(1)).parameters
+    R = matrix(independent_noise, site, state, (axes, axes), parameters)
     np.testing.assert_array_equal(R, 9.0 * np.eye(axes))
 
 
 def test_noise_of_range_and_bearing_is_in_metres_and_radians():
-    model = range_bearing().sensor_model()
-    R = matrix(range_and_bearing_noise, np.zeros(4), np.ones(4), (2, 2), model.parameters)
+    model = range_bearing().sensor_model(np.zeros(1))
+    R = matrix(independent_noise, np.zeros(4), np.ones(4), (2, 2), model.parameters)
     np.testing.assert_allclose(R, np.diag([100.0, math.radians(1.0) ** 2]))
     np.testing.assert_array_equal(model.periods, [0.0, 2 * math.pi])
 

@@ -89,7 +89,10 @@ def position_sensor(axes, noise_sd, detection_probability, clutter):
 
 
 def models_of(motion, sensor):
-    return Models(motion, sensor.sensor_model(), sensor.detection_model(), sensor.clutter_model())
+    times = np.zeros(1)
+    return Models(
+        motion, sensor.sensor_model(times), sensor.detection_model(), sensor.clutter_model(times)
+    )
 
 
 def _start(axes, orders, mean, covariance):

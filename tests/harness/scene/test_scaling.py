@@ -18,7 +18,9 @@ from filters.strategies import (
     ProbabilisticDataAssociation,
 )
 from filters.strategies.strategy import Assumptions
-from harness.scene.simulate import draw_scenes, models_of, prior_of
+from harness.scene.models import models_of
+from harness.scene.simulate import draw_scenes
+from harness.scene.truth import prior_of
 from harness.study.schema import Scene
 from metrics.consistency import nees
 from metrics.track_loss import loss_scan

@@ -12,7 +12,9 @@ from filters.hypotheses import NOT_DETECTED
 from filters.models.sensor import PositionSensor
 from filters.random_numbers import numbers_of
 from filters.track import ORIGIN_UNKNOWN
-from harness.scene.simulate import draw_detections, draw_scenes, draw_truth
+from harness.scene.detections import draw_detections
+from harness.scene.simulate import draw_scenes
+from harness.scene.truth import draw_truth
 from harness.study.schema import Scene
 
 SEED = 20260101

@@ -153,8 +153,9 @@ MISTAKES = {
         "write noise_sd_m, in m",
     ),
     "a key of another kind": (
-        "assumes.sensor.position_m = [1.0, 2.0]",
-        f"{AT}.sensor.position_m = [1.0, 2.0]: is unknown here: only kind = range-bearing has it; "
+        "assumes.sensor.region_elevation_deg = [0.0, 9.0]",
+        f"{AT}.sensor.region_elevation_deg = [0.0, 9.0]: is unknown here: "
+        "only kind = range-azimuth-elevation has it; "
         "choose that, or remove it",
     ),
     "an unknown table": (

@@ -179,7 +179,8 @@ CASES = {
     ),
     "a missing key": (
         ("scans = 30\n", ""),
-        "5: scene.scans: is missing; add it: number of scans of a trial",
+        "5: scene.scans: is missing; give it, or scan_times_s in place of scans and "
+        "scan_interval_s",
     ),
     "a missing key of the whole": (
         ("seed = 12\n", ""),
@@ -242,13 +243,13 @@ CASES = {
     "no clutter stated": (
         ("clutter_density_per_m2 = 2e-5\n", ""),
         "17: scene.sensor.clutter_per_scan: is missing; give one of clutter_density_per_m, "
-        "clutter_density_per_m2, clutter_density_per_m3, clutter_per_scan",
+        "clutter_density_per_m2, clutter_density_per_m3, clutter_per_scan, or the table clutter",
     ),
     "target and sensor of different axes": (
         (REGION, "region_m = [[-400.0, 400.0]]\nclutter_per_scan = 2"),
         ("clutter_density_per_m2 = 2e-5\n", ""),
         "12: scene.target.start_position_m = [40.0, -20.0]: has 2 entries but the sensor works "
-        "along 1 axes; give the target and the sensor's region the same number",
+        "along 1 axes; give the target and the sensor's place or region the same number",
     ),
     "a covariance of the wrong size": (
         (SPREADS, "start_covariance = [[1, 0], [0, 1]]"),
@@ -258,7 +259,7 @@ CASES = {
     "a covariance beside standard deviations": (
         (SPREADS, SPREADS + "\nstart_covariance = [[1, 0], [0, 1]]"),
         "14: scene.target.start_position_sd_m = [8.0, 8.0]: says the same as start_covariance; "
-        "keep one of the two ways",
+        "keep one of them",
     ),
     "half of the standard deviations": (
         ("start_velocity_sd_m_per_s = [1.0, 1.0]\n", ""),
