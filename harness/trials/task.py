@@ -122,7 +122,7 @@ def _batches(task: Task) -> Iterator[list[Span]]:
     A call of a kernel costs half a millisecond, so it should serve many trials; but their estimates
     should stay small enough for the caches.
     """
-    most = max(1, _SCANS_PER_BATCH // (SPAN * task.scene.scans))
+    most = max(1, _SCANS_PER_BATCH // (SPAN * task.scene.scan_count))
     batch: list[Span] = []
     for span in task.spans:
         if batch and (len(batch) == most or span.number != batch[-1].number + 1):
