@@ -1,5 +1,7 @@
 """Does the error fit the covariance that the filter claims? NEES and NIS against chi-square."""
 
+from collections.abc import Iterator
+
 import numpy as np
 from numpy.typing import ArrayLike
 from scipy.special import gammaincinv
@@ -26,10 +28,20 @@ def nis(innovation: ArrayLike, covariance: ArrayLike) -> FloatArray:
 
 
 def squared_mahalanobis(difference: ArrayLike, covariance: ArrayLike) -> FloatArray:
-    """d' C⁻¹ d for every leading index at once; shapes and errors as `nees`.
+    """d' C⁻¹ d for every leading index at once; shapes and errors as `nees`."""
+    total = np.zeros(np.shape(difference)[:-1])
+    for pivot, rest in eliminate(difference, covariance):
+        total += rest**2 / pivot
+    return total[()]
 
-    Cholesky in its root-free form C = L D L': with L y = d, the result is the sum of y_j² / D_j.
-    One column after the other is removed from what remains of C and d.
+
+def eliminate(
+    difference: ArrayLike, covariance: ArrayLike
+) -> Iterator[tuple[FloatArray, FloatArray]]:
+    """Yield D_j and y_j, (...) each, of Cholesky's root-free form C = L D L' with L y = d.
+
+    d' C⁻¹ d is the sum of y_j² / D_j, and the determinant of C the product of the D_j. One column
+    after the other is removed from what remains of C and d. Shapes and errors as `nees`.
     """
     difference, covariance = np.asarray(difference, float), np.asarray(covariance, float)
     n = difference.shape[-1] if difference.ndim else 0
@@ -42,17 +54,15 @@ def squared_mahalanobis(difference: ArrayLike, covariance: ArrayLike) -> FloatAr
     # changed in place: with fresh arrays throughout, page faults took longer than the arithmetic.
     rest = np.moveaxis(difference, -1, 0).copy()
     remaining = np.moveaxis(covariance, (-2, -1), (0, 1)).copy()
-    total = np.zeros(difference.shape[:-1])
     for j in range(n):
         pivot = remaining[j, j]
         _check_positive(pivot, j)
-        total += rest[j] ** 2 / pivot
+        yield pivot, rest[j]
         for i in range(j + 1, n):
             factor = remaining[i, j] / pivot
             rest[i] -= factor * rest[j]
             for k in range(j + 1, i + 1):
                 remaining[i, k] -= factor * remaining[k, j]
-    return total[()]
 
 
 def _check_positive(pivot: FloatArray, column: int) -> None:

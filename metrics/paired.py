@@ -18,7 +18,7 @@ from metrics.intervals import (
     mean_influence,
     standard_error,
 )
-from metrics.present import FloatArray
+from metrics.present import FloatArray, mean_where_present
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -121,6 +121,33 @@ def root_mean_ratio(
         estimate=float(np.exp(log_ratio)),
         interval=exponentiated(log_ratio, half_width(influence, level)),
         p_value=_t_test(log_ratio, influence),
+        pairs=len(influence),
+    )
+
+
+def mean_difference(first: ArrayLike, second: ArrayLike, level: float = 0.95) -> PairedComparison:
+    """Mean of first minus second over the scans that have both, by Student's t on the trials.
+
+    first, second  (trials, scans) in any unit, NaN where a scan has no value
+    returns        pairs counts the trials with such a scan; NaN below two of them
+    raises         ValueError: shapes disagree
+    """
+    check_level(level)
+    first, second = np.asarray(first, float), np.asarray(second, float)
+    if first.ndim != 2 or first.shape != second.shape:
+        raise ValueError(
+            f"values must both have the shape (trials, scans), got {first.shape} and {second.shape}"
+        )
+    difference = first - second
+    both = ~np.isnan(difference)
+    mean, influence = mean_influence(mean_where_present(difference, both, axis=1), both.sum(axis=1))
+    if len(influence) < 2:
+        return _no_comparison(pairs=len(influence))
+    half = half_width(influence, level)
+    return PairedComparison(
+        estimate=mean,
+        interval=Interval(np.float64(mean - half), np.float64(mean + half)),
+        p_value=_t_test(mean, influence),
         pairs=len(influence),
     )
 

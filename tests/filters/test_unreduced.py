@@ -1,0 +1,31 @@
+"""How large an unreduced mixture grows, and what is said before memory runs out."""
+
+import numpy as np
+import pytest
+from small_worlds import as_scans, exact_mixture, random_walk_world, run_on
+
+from filters.unreduced import capacity_unreduced, components_unreduced
+
+TRIALS = [[[0.5, 2.0], [1.5], [-3.0, 2.5], []], [[], [], [0.1], []]]
+
+
+def test_a_component_for_every_history_of_associations():
+    scans = as_scans(TRIALS, 1)
+    np.testing.assert_array_equal(components_unreduced(scans), [18, 2])
+    assert capacity_unreduced(scans, 2) == 18
+
+
+def test_the_capacity_is_all_that_the_exact_mixture_needs():
+    """Hypotheses formed are 3 + 3 x 2 + 6 x 3 + 18 with that capacity, and fewer with one less."""
+    scans, world = as_scans(TRIALS[:1], 1), random_walk_world()
+    capacity = capacity_unreduced(scans, 2)
+    assert run_on(world, exact_mixture(capacity), scans).hypotheses[0] == 3 + 6 + 18 + 18
+    assert run_on(world, exact_mixture(capacity - 1), scans).hypotheses[0] == 3 + 6 + 18 + 17
+
+
+def test_a_scene_beyond_memory_is_refused_before_any_is_taken():
+    with pytest.raises(ValueError, match=r"trial 0 .* fit into 2 GB"):
+        capacity_unreduced(as_scans([[[0.0] * 9] * 9], 1), 4)
+    crowded = as_scans([[[0.0] * 9] * 400], 1)
+    with pytest.raises(ValueError, match=r"would need inf components .* 3600 detections in 400"):
+        capacity_unreduced(crowded, 4)
