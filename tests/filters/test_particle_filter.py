@@ -17,10 +17,12 @@ from small_worlds import (
     skipping_nothing,
 )
 
+from filters.compiled import model_function
+from filters.models.contract import STATE_MATRIX
 from filters.particle_filter import ParticleStrategy, cloud_for, compiled_particle_filter
 from filters.random_numbers import numbers_of
 from filters.strategies.strategy import gate_of
-from filters.track import Ending, room_for_tracks
+from filters.track import Ending, Prior, room_for_tracks
 
 DETECTIONS = [[0.5, 2.0], [1.5, -3.0], [-3.0, 2.5], [], [4.0, 1.0]]
 
@@ -131,6 +133,7 @@ SCANS = {
     "one": [1.0],
     "several": [1.0, -2.0, 0.3, 2.5],
     "near and far": [1.0, 300.0, -1e5],
+    "rather far": [12.0],
     "all far": [300.0, -900.0],
     "very far": [1e6],
     "many": list(np.linspace(-30, 30, 300)),
@@ -208,6 +211,29 @@ def test_a_trial_alone_is_the_same_trial_in_a_batch():
     assert np.any(
         batch.means[4] != run_on(world, strategy, as_scans(drawn.trials[4:5], 1)).means[0]
     )
+
+
+@model_function(STATE_MATRIX)
+def noise_by_own_speed(parameters, interval, state, out):
+    out[:] = 0.0
+    out[0, 0] = parameters[0] * state[1] ** 2
+
+
+def test_noise_that_varies_with_the_state_moves_every_particle_by_its_own():
+    """With a variance of q s^2, Var x grows by q E[s^2]: from 2 to 2 + 0.5 (2 + 3^2), s ~ N(3, 2).
+
+    20,000 particles; the variance of a sample is good to sqrt(2 / N) = 1 %, here a little less as
+    the tails are heavier; allowed are 5 %.
+    """
+    world = random_walk_world()
+    motion = world.assumptions.models.motion._replace(
+        process_noise=noise_by_own_speed.compiled, parameters=np.array([0.5]), linear=False
+    )
+    models = world.assumptions.models._replace(motion=motion)
+    prior = Prior(np.array([0.0, 3.0]), 2.0 * np.eye(2))
+    uneven = world._replace(assumptions=world.assumptions._replace(models=models, prior=prior))
+    tracks = run_on(uneven, particle_filter(particles=20_000), as_scans([[[], []]], 1))
+    np.testing.assert_allclose(tracks.covariances[0, :, 0, 0], [2.0, 7.5], rtol=0.05)
 
 
 @pytest.mark.parametrize("resample_below", [0.0, 0.5, 1.0])
