@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import time
 import traceback
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from filters.compiled import raising_what_compiled_code_raised
@@ -137,10 +137,12 @@ def _rows_of(span: Span, batch: SceneBatch) -> slice:
     return slice(start, start + span.trials)
 
 
-def run_task_safely(task: Task) -> list[SpanResult] | TaskFailure:
+def run_task_safely(
+    task: Task, run: Callable[[Task], list[SpanResult]] = run_task
+) -> list[SpanResult] | TaskFailure:
     """Run a task; an exception becomes a record, so that it cannot stop other tasks."""
     try:
-        return run_task(task)
+        return run(task)
     except Exception as error:  # whatever it is, the driver tells it
         return TaskFailure(f"{type(error).__name__}: {error}", traceback.format_exc())
 

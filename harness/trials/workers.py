@@ -12,7 +12,7 @@ from joblib import Parallel, cpu_count, delayed
 from joblib.externals.loky.process_executor import TerminatedWorkerError
 from threadpoolctl import threadpool_limits
 
-from harness.trials.task import SpanResult, Task, TaskFailure, run_task_safely
+from harness.trials.task import SpanResult, Task, TaskFailure, run_task, run_task_safely
 from harness.trials.warm_up import warm_up
 
 Outcome = tuple[int, list[SpanResult] | TaskFailure]
@@ -94,8 +94,12 @@ _watching = threading.Event()
 
 def _run_in_worker(index: int, task: Task, parent: int) -> Outcome:
     end_with_parent(parent)
+    return index, run_task_safely(task, _run_warm)
+
+
+def _run_warm(task: Task) -> list[SpanResult]:
     warm_up([task])
-    return index, run_task_safely(task)
+    return run_task(task)
 
 
 def end_with_parent(parent: int) -> None:
