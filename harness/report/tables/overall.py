@@ -180,6 +180,8 @@ def _meaning(results: Results, conditions: int) -> str:
     )
     if cheapest == leader:
         text += "; it is also the cheapest."
+    elif cost[leader] <= (1 + EQUAL_COSTS) * min(cost[name] for name in loss):
+        text += f"; none is cheaper by more than {EQUAL_COSTS:.0%}."
     else:
         text += (
             f". The cheapest, {cheapest} ({short(cost[cheapest])} us a scan against "
