@@ -19,12 +19,13 @@ from threadpoolctl import threadpool_limits
 
 sys.path.insert(0, str(Path(__file__).parents[2]))
 
-from c_pda import NoCompiler, compiled_c_pda
+from c_pda import NoCompiler, c_pda
 from numpy_pda import numpy_pda
 from reference_pda import reference_pda
-from scenes import CLUTTER_PER_SCAN, SCANS, Drawn, drawn, first_trials, linear_model
+from scenes import CLUTTER_PER_SCAN, SCANS, Drawn, Estimates, drawn, first_trials, linear_model
 from timing import Record, Timing, interleaved, table
 
+from filters.hypothesis_filter import HypothesisStrategy, compiled_filter, room_for
 from filters.strategies import (
     GaussianMixture,
     KnownAssociation,
@@ -33,8 +34,9 @@ from filters.strategies import (
     ParticleFilter,
     ProbabilisticDataAssociation,
 )
+from filters.strategies.gaussian import compiled_reduction
 from filters.strategies.strategy import Strategy
-from filters.track import Tracks
+from filters.track import Tracks, room_for_tracks
 
 TRIALS = 200
 PDA = ProbabilisticDataAssociation(kind="pda")
@@ -55,47 +57,71 @@ def run(strategy: Strategy, batch: Drawn) -> Tracks:
 
 
 def pda_rows(batch: Drawn) -> list[Record]:
-    """Rows of our PDA against the reference library, a NumPy program and a C program."""
-    model = linear_model()
-    few, some = first_trials(batch, 1), first_trials(batch, 10)
-    rows = [
-        pda_row(batch, "reference library", few, reference_pda(model, few.scans), 1e-6, 5, 1000.0),
-        pda_row(batch, "NumPy program", some, lambda: numpy_pda(model, some.scans), 1e-9, 30, 40.0),
-    ]
-    with tempfile.TemporaryDirectory() as folder:
-        try:
-            c_pda = compiled_c_pda(Path(folder))
-        except NoCompiler as reason:
-            print(f"No row of PDA against a C program: {reason}.")
-            return rows
-        other = "C program, gcc -O3"
-        rows.append(
-            pda_row(batch, other, batch, lambda: c_pda(model, batch.scans), 1e-9, 200, 1 / 3)
-        )
-    return rows
-
-
-def pda_row(
-    batch: Drawn,
-    name: str,
-    part: Drawn,
-    other: Callable[[], tuple[np.ndarray, np.ndarray]],
-    tolerance: float,
-    repeats: int,
-    wanted: float,
-) -> Record:
-    """Check that another PDA, which runs a part of the batch, says what ours says; then time both.
+    """Rows of our PDA against the reference library, a NumPy program and a C program.
 
     raises      AssertionError: estimates differ
     """
-    tracks = run(PDA, part)
-    means, covariances = other()
-    np.testing.assert_allclose(tracks.means, means, rtol=tolerance, atol=tolerance)
-    np.testing.assert_allclose(tracks.covariances, covariances, rtol=tolerance, atol=tolerance)
-    ours, theirs = interleaved(lambda: run(PDA, batch), other, repeats=repeats)
-    ratio = (theirs.best / part.scan_count) / (ours.best / batch.scan_count)
-    spread = max(ours.worst / ours.best, theirs.worst / theirs.best)
-    return Record("PDA, a scan", each(ours, batch.scan_count), name, ratio, wanted, spread)
+    model = linear_model()
+    few, some = first_trials(batch, 1), first_trials(batch, 10)
+    scans = batch.scan_count
+
+    def ours() -> Tracks:
+        return run(PDA, batch)
+
+    reference = reference_pda(model, few.scans)
+    must_agree(run(PDA, few), reference(), 1e-6)
+    times = interleaved(ours, reference, repeats=5)
+    counts = scans, few.scan_count
+    rows = [compared("PDA, a scan", "reference library", times, counts, 1000.0)]
+
+    def in_numpy() -> Estimates:
+        return numpy_pda(model, some.scans)
+
+    must_agree(run(PDA, some), in_numpy(), 1e-9)
+    times = interleaved(ours, in_numpy, repeats=30)
+    counts = scans, some.scan_count
+    rows.append(compared("PDA, a scan", "NumPy program", times, counts, 40.0))
+
+    with tempfile.TemporaryDirectory() as folder:
+        try:
+            in_c = c_pda(Path(folder), model, batch.scans)
+        except NoCompiler as reason:
+            print(f"No row of the PDA kernel against one in C: {reason}.")
+            return rows
+        kernel = pda_kernel(batch)
+        must_agree(kernel(), in_c(), 1e-9)
+        times = interleaved(kernel, in_c, repeats=200)
+    rows.append(compared("PDA kernel, a scan", "C kernel, gcc -O3", times, (scans, scans), 1 / 3))
+    return rows
+
+
+def pda_kernel(batch: Drawn) -> Callable[[], Tracks]:
+    """Our PDA alone, its room and tracks made beforehand, as those of the C kernel are."""
+    models, prior, axes = batch.assumptions
+    n, m = len(prior.mean), batch.scans.detections.shape[1]
+    strategy = HypothesisStrategy(
+        compiled_reduction(type(PDA).reduction, n),
+        PDA.reduction_settings(),
+        PDA.capacity(),
+        PDA.gate(m),
+        PDA.ends.rule(axes),
+        PDA.estimate_choice(),
+    )
+    tracks = room_for_tracks(batch.scans, n)
+    room = room_for(n, m, strategy.capacity, batch.scans.most_detections)
+    kernel = compiled_filter(n, m)
+
+    def run_kernel() -> Tracks:
+        kernel(models, strategy, prior, batch.scans, tracks, room)
+        return tracks
+
+    return run_kernel
+
+
+def must_agree(ours: Tracks, theirs: Estimates, tolerance: float) -> None:
+    """Fail unless two trackers say the same of every scan."""
+    for found, expected in zip((ours.means, ours.covariances), theirs, strict=True):
+        np.testing.assert_allclose(found, expected, rtol=tolerance, atol=tolerance)
 
 
 def strategy_rows(batch: Drawn) -> list[Record]:
@@ -128,6 +154,16 @@ GROUPS = (pda_rows, strategy_rows, particle_rows)
 def plain_row(name: str, timing: Timing, count: int) -> Record:
     """Return a row that compares with nothing."""
     return Record(name, each(timing, count), spread=timing.worst / timing.best)
+
+
+def compared(
+    name: str, against: str, times: list[Timing], counts: tuple[int, int], wanted: float
+) -> Record:
+    """Return the row of ours and another, each timed on its own number of scans."""
+    ours, theirs = times
+    own = each(ours, counts[0])
+    spread = max(ours.worst / ours.best, theirs.worst / theirs.best)
+    return Record(name, own, against, each(theirs, counts[1]) / own, wanted, spread)
 
 
 def each(timing: Timing, count: int) -> float:

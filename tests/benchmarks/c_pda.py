@@ -5,9 +5,10 @@ import shutil
 import subprocess
 from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import numpy as np
-from scenes import Model
+from scenes import Estimates, Model
 
 from filters.track import Scans
 
@@ -19,42 +20,41 @@ class NoCompiler(RuntimeError):
     """There is no gcc to compile with."""
 
 
-def compiled_c_pda(folder: Path) -> Callable[[Model, Scans], tuple[np.ndarray, np.ndarray]]:
-    """Compile into a folder.
+def c_pda(folder: Path, model: Model, scans: Scans) -> Callable[[], Estimates]:
+    """Compile into a folder and make room; what is returned follows all trials in one call.
 
-    returns     function of model and scans: means (trials, scans, 4) and covariances
-                (trials, scans, 4, 4) after every scan, all trials in one call of the C program
     raises      NoCompiler
     """
+    run_pda = _compiled(folder).run_pda
+    run_pda.restype = None
+    trials, length = scans.origins.shape
+    means, covariances = np.empty((trials, length, 4)), np.empty((trials, length, 4, 4))
+    arrays = (_packed(model), model.mean, model.covariance, scans.detections, scans.offsets)
+    given = [_address(array) for array in arrays]
+    sizes = ctypes.c_int64(trials), ctypes.c_int64(length)
+    written = _address(means), _address(covariances)
+
+    def run() -> Estimates:
+        run_pda(*given, *sizes, *written)
+        return means, covariances
+
+    return run
+
+
+def _compiled(folder: Path) -> ctypes.CDLL:
     compiler = shutil.which("gcc")
     if compiler is None:
         raise NoCompiler("no gcc on the path")
     library = folder / "pda.so"
     subprocess.run([compiler, *OPTIONS, "-o", library, SOURCE, "-lm"], check=True)
-    run_pda = ctypes.CDLL(str(library)).run_pda
-    array = np.ctypeslib.ndpointer(float, flags="C_CONTIGUOUS")
-    offsets = np.ctypeslib.ndpointer(np.int64, flags="C_CONTIGUOUS")
-    size = ctypes.c_int64
-    run_pda.argtypes = [array, array, array, array, offsets, size, size, array, array]
-    run_pda.restype = None
+    return ctypes.CDLL(str(library))
 
-    def c_pda(model: Model, scans: Scans) -> tuple[np.ndarray, np.ndarray]:
-        trials, length = scans.origins.shape
-        means, covariances = np.empty((trials, length, 4)), np.empty((trials, length, 4, 4))
-        run_pda(
-            _packed(model),
-            model.mean,
-            model.covariance,
-            scans.detections,
-            scans.offsets,
-            trials,
-            length,
-            means,
-            covariances,
-        )
-        return means, covariances
 
-    return c_pda
+def _address(array: np.ndarray) -> Any:
+    """Pointer to the numbers of a C-contiguous array, which it keeps alive."""
+    if array.dtype not in (np.float64, np.int64) or not array.flags.c_contiguous:
+        raise TypeError(f"the C program takes contiguous doubles and int64, got {array.dtype}")
+    return array.ctypes.data_as(ctypes.c_void_p)
 
 
 def _packed(model: Model) -> np.ndarray:

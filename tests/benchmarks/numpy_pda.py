@@ -10,15 +10,15 @@ association filter, with Poisson clutter of a stated density.
 import math
 
 import numpy as np
-from scenes import Model
+from scenes import Estimates, Model
 
 from filters.track import Scans
 
 ONES = np.ones(2)
 
 
-def numpy_pda(model: Model, scans: Scans) -> tuple[np.ndarray, np.ndarray]:
-    """Means (trials, scans, 4) and covariances (trials, scans, 4, 4) after every scan."""
+def numpy_pda(model: Model, scans: Scans) -> Estimates:
+    """Follow the target through every trial."""
     trials, length = scans.origins.shape
     means, covariances = np.empty((trials, length, 4)), np.empty((trials, length, 4, 4))
     for trial in range(trials):

@@ -8,7 +8,7 @@ import datetime
 from collections.abc import Callable
 
 import numpy as np
-from scenes import INTERVAL, NOISE_SD, PSD, Model
+from scenes import INTERVAL, NOISE_SD, PSD, Estimates, Model
 from stonesoup.dataassociator.probability import PDA
 from stonesoup.functions import gm_reduce_single
 from stonesoup.hypothesiser.probability import PDAHypothesiser
@@ -32,12 +32,8 @@ START = datetime.datetime(2000, 1, 1)
 ORDER = [0, 2, 1, 3]
 
 
-def reference_pda(model: Model, scans: Scans) -> Callable[[], tuple[np.ndarray, np.ndarray]]:
-    """Prepare a run.
-
-    returns     function that runs it: means (trials, scans, 4) and covariances
-                (trials, scans, 4, 4) after every scan
-    """
+def reference_pda(model: Model, scans: Scans) -> Callable[[], Estimates]:
+    """Prepare to follow the target through every trial; what is returned does it."""
     predictor = KalmanPredictor(
         CombinedLinearGaussianTransitionModel([ConstantVelocity(PSD), ConstantVelocity(PSD)])
     )
@@ -60,7 +56,7 @@ def reference_pda(model: Model, scans: Scans) -> Callable[[], tuple[np.ndarray, 
     ]
     start = GaussianState(model.mean[ORDER], model.covariance[np.ix_(ORDER, ORDER)], START)
 
-    def run() -> tuple[np.ndarray, np.ndarray]:
+    def run() -> Estimates:
         means, covariances = np.empty((trials, length, 4)), np.empty((trials, length, 4, 4))
         for trial in range(trials):
             track = Track([start])

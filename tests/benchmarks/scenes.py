@@ -26,6 +26,9 @@ DETECTION_PROBABILITY = 0.9
 GATE_PROBABILITY = 0.9997
 SIDE = 1000.0  # m
 
+# Means (trials, scans, 4) and covariances (trials, scans, 4, 4) after every scan.
+Estimates = tuple[np.ndarray, np.ndarray]
+
 SCENE = Scene.model_validate(
     {
         "scans": SCANS,
