@@ -64,7 +64,7 @@ def _draw_in_box(
     site: Any,
     level: float,
     box: Any,
-    is_alone: bool,
+    is_first: bool,
     numbers: Numbers,
     first: int,
     filled: int,
@@ -77,12 +77,12 @@ def _draw_in_box(
     height = exponential(numbers)
     while height < box[2 * m] * per_height:
         point = detections[free_row(filled, detections)]
-        share = 0.0 if is_alone else uniform(numbers)
+        share = 0.0 if is_first else uniform(numbers)
         for i in range(m):
             point[i] = box[i] + (2.0 * uniform(numbers) - 1.0) * box[m + i]
         wrap(m, sensor.periods, point)
         if height < clutter.intensity(clutter.parameters, site, point) * per_height:
-            if not is_alone:  # else the order of the points says nothing anyway
+            if not is_first:
                 move_among(m, share, first, filled, detections)
             filled += 1
         height += exponential(numbers)
@@ -137,7 +137,6 @@ def draw_clutter(
     """
     boxes, bumps = models.clutter.boxes, models.clutter.bumps
     first = filled
-    is_alone = boxes.shape[0] + bumps.shape[0] == 1
     for source in range(boxes.shape[0]):
         if boxes[source, 2 * m] > 0.0:
             open_at(numbers, trial, CLUTTER + SPLIT * source, scan)
@@ -147,7 +146,7 @@ def draw_clutter(
                 site,
                 level,
                 boxes[source],
-                is_alone,
+                source == 0,  # among themselves their order says nothing anyway
                 numbers,
                 first,
                 filled,
