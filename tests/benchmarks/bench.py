@@ -20,6 +20,7 @@ from threadpoolctl import threadpool_limits
 sys.path.insert(0, str(Path(__file__).parents[2]))
 
 from c_pda import NoCompiler, c_pda
+from harness_rows import two_workers_row, whole_trial_row
 from numpy_pda import numpy_pda
 from reference_pda import reference_pda
 from scenes import CLUTTER_PER_SCAN, SCANS, Drawn, Estimates, drawn, first_trials, linear_model
@@ -148,7 +149,16 @@ def particle_rows(batch: Drawn) -> list[Record]:
     ]
 
 
-GROUPS = (pda_rows, strategy_rows, particle_rows)
+def harness_rows(batch: Drawn) -> list[Record]:
+    """Rows of whole trials: what surrounds the kernels, and a second worker."""
+    rows = [whole_trial_row(STRATEGIES)]
+    if (os.cpu_count() or 1) < 2:
+        print("No row of two workers: there is one core.")
+        return rows
+    return [*rows, two_workers_row(STRATEGIES)]
+
+
+GROUPS = (pda_rows, strategy_rows, particle_rows, harness_rows)
 
 
 def plain_row(name: str, timing: Timing, count: int) -> Record:
