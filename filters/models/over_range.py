@@ -15,6 +15,9 @@ OverRange = Annotated[tuple[tuple[NonNegative, NonNegative], ...], Field(min_len
 FactorOverRange = Annotated[tuple[tuple[NonNegative, Positive], ...], Field(min_length=1)]
 ProbabilityOverRange = Annotated[tuple[tuple[NonNegative, Probability], ...], Field(min_length=1)]
 
+# Ends the key of every table, so that a factor knows that it multiplies the values alone.
+OVER_RANGE = "_over_range"
+
 
 def check_over_range(key: str, rows: Sequence[tuple[float, float]]) -> None:
     """Check that the ranges of a table grow.

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from harness.study.keys import ASSUMABLE, Choice, Leaf, Row, Table, is_numeric
+from harness.study.keys import ASSUMABLE, Choice, Node, Table, is_numeric, tables_of
 from harness.study.schema import Scene, StudyDocument
 
 Schema = dict[str, Any]
@@ -85,27 +85,34 @@ def _take_single_values(swept: Schema) -> None:
 
 def _assumes(definitions: Schema) -> Schema:
     """Return the schema of `assumes`: any key of any kind, each as such or as a factor."""
-    roles: Schema = {}
-    for role in ASSUMABLE:
-        choice = Table(Scene).fields[role]
-        assert isinstance(choice, Choice)
-        keys: Schema = {}
-        for table in choice.tables({}):
-            for key, node in table.fields.items():
-                stated = definitions[table.record.__name__]["properties"][key]
-                keys[key] = _or_factor(stated, node) if isinstance(node, Leaf | Row) else stated
-        keys[str(choice.tag)] = {"enum": list(choice.options), "title": choice.tag}
-        roles[role] = {
-            "type": "object",
+    roles = {
+        role: {
+            **_changeable(Table(Scene).fields[role], definitions),
             "title": role,
             "description": f"What differs from the scene's {role}.",
-            "properties": keys,
-            "additionalProperties": False,
         }
+        for role in ASSUMABLE
+    }
     return {"type": "object", "properties": roles, "additionalProperties": False}
 
 
-def _or_factor(stated: Schema, node: Leaf | Row) -> Schema:
+def _changeable(node: Node, definitions: Schema) -> Schema:
+    """Return the schema of a table of which any keys, of any kind, are given anew or multiplied."""
+    keys: Schema = {}
+    for table in tables_of(node, None):
+        for key, child in table.fields.items():
+            stated = definitions[table.record.__name__]["properties"][key]
+            if isinstance(child, Table | Choice):
+                notes = {name: stated[name] for name in _NOTES if name in stated}
+                keys[key] = {**_changeable(child, definitions), **notes}
+            else:
+                keys[key] = _or_factor(stated, child)
+    if isinstance(node, Choice):
+        keys[str(node.tag)] = {"enum": list(node.options), "title": node.tag}
+    return {"type": "object", "properties": keys, "additionalProperties": False}
+
+
+def _or_factor(stated: Schema, node: Node) -> Schema:
     if not is_numeric(node):
         return stated
     value = {key: entry for key, entry in stated.items() if key not in _NOTES}

@@ -29,10 +29,19 @@ class Leaf:
 
 @dataclass(frozen=True)
 class Row:
-    """A list, and what its entries are."""
+    """A list, and what its entries are: all alike, or each of its own in a list of fixed size."""
 
-    entry: Node
+    entries: tuple[Node, ...]
     size: int | None = None  # None for any
+
+    @property
+    def entry(self) -> Node:
+        """What its first entry is."""
+        return self.entries[0]
+
+    def at(self, place: int) -> Node:
+        """What the entry at a place is."""
+        return self.entries[min(place, len(self.entries) - 1)]
 
 
 @dataclass(frozen=True)
@@ -97,7 +106,8 @@ def node_of(annotation: Any, notes: tuple[Any, ...] = ()) -> Node:
     if origin in (tuple, list):
         entries = get_args(annotation)
         is_fixed = origin is tuple and entries[-1] is not Ellipsis
-        return Row(node_of(entries[0]), len(entries) if is_fixed else None)
+        own = entries if is_fixed else entries[:1]
+        return Row(tuple(map(node_of, own)), len(entries) if is_fixed else None)
     if isinstance(annotation, type) and issubclass(annotation, Record):
         return Table(annotation)
     limits = [note.metadata if isinstance(note, FieldInfo) else [note] for note in notes]
@@ -127,7 +137,7 @@ def node_at(location: tuple[str | int, ...], root: Node) -> Node | None:
 
 def is_numeric(node: Node) -> bool:
     """Whether it is a number, or a list of numbers."""
-    return is_numeric(node.entry) if isinstance(node, Row) else _is_number(node)
+    return all(map(is_numeric, node.entries)) if isinstance(node, Row) else _is_number(node)
 
 
 def keys_of(document: Mapping[str, Any]) -> dict[str, Node]:
@@ -150,7 +160,7 @@ def _below(
     yield path, node
     if isinstance(node, Row) and isinstance(raw, list | tuple):
         for place, entry in enumerate(raw):
-            yield from _below((*path, str(place)), node.entry, entry, document)
+            yield from _below((*path, str(place)), node.at(place), entry, document)
     elif isinstance(node, Named) and isinstance(raw, Mapping):
         for name, entry in raw.items():
             if isinstance(name, str):
@@ -169,26 +179,41 @@ def _assumable_keys(
     path: tuple[str, ...], node: Node, assumes: Any, scene: Any
 ) -> Iterator[tuple[tuple[str, ...], Node]]:
     yield path, node
+    said = laid_over(scene, assumes)
     for role in ASSUMABLE:
-        choice = Table(Scene).fields[role]
-        yield (*path, role), choice
-        for table in assumable_tables(role, assumes, scene):
-            for name, child in table.fields.items():
-                yield (*path, role, name), child
-                if is_numeric(child):
-                    yield (*path, role, name, "factor"), FACTOR
+        yield from _changeable_keys((*path, role), Table(Scene).fields[role], said.get(role))
 
 
-def assumable_tables(role: str, assumes: Any, scene: Any) -> list[Table]:
-    """Return the kinds that a strategy's target or sensor may have, given what is said of it."""
-    choice = Table(Scene).fields[role]
-    said = [
-        table[role]
-        for table in (scene, assumes)
-        if isinstance(table, Mapping) and isinstance(table.get(role), Mapping)
-    ]
-    merged = {key: value for table in said for key, value in table.items()}
-    return choice.tables(merged) if isinstance(choice, Choice) else []
+def _changeable_keys(
+    path: tuple[str, ...], node: Node, raw: Any
+) -> Iterator[tuple[tuple[str, ...], Node]]:
+    """Yield a key and those under it, where each may be given anew or multiplied."""
+    yield path, node
+    if is_numeric(node):
+        yield (*path, "factor"), FACTOR
+    for table in tables_of(node, raw):
+        for name, child in table.fields.items():
+            inner = raw.get(name) if isinstance(raw, Mapping) else None
+            yield from _changeable_keys((*path, name), child, inner)
+
+
+def tables_of(node: Node, raw: Any) -> list[Table]:
+    """Return the tables that a raw value may be, given its kind; none where it is no table."""
+    if isinstance(node, Choice):
+        return node.tables(raw)
+    return [node] if isinstance(node, Table) else []
+
+
+def laid_over(scene: Any, assumes: Any) -> dict[str, Any]:
+    """Return what is said when a table is laid over another, tables in them likewise."""
+    below, above = (table if isinstance(table, Mapping) else {} for table in (scene, assumes))
+    return {
+        **below,
+        **{
+            key: laid_over(below.get(key), value) if isinstance(value, Mapping) else value
+            for key, value in above.items()
+        },
+    }
 
 
 @functools.cache
@@ -219,6 +244,8 @@ def _form_of(member: Any) -> str:
 def _child(node: Node | None, part: str | int) -> Node | None:
     if isinstance(node, Table):
         return node.fields.get(str(part))
+    if isinstance(node, Row) and isinstance(part, int):
+        return node.at(part)
     return node.entry if isinstance(node, Row | Named) else None
 
 

@@ -6,7 +6,7 @@ import difflib
 import re
 from collections.abc import Iterable
 
-_UNIT = r"(?:km|hm|cm|mm|nmi|ft|ms|us|min|rad|mrad|deg|kmh|kn|m|s|h)\d?"
+_UNIT = r"(?:km|hm|cm|mm|nmi|ft|ms|us|min|rad|mrad|deg|kmh|kn|db|m|s|h|g)\d?"
 _UNITS = re.compile(rf"^(.+?)_((?:per_)?{_UNIT}(?:_(?:per_)?{_UNIT})*)$")
 
 
@@ -30,7 +30,8 @@ def unit_of(key: str) -> str:
     _, unit = _parts(key)
     if unit.startswith("per_"):
         return unit.replace("_", " ")
-    return f"in {unit.replace('_per_', '/').replace('_', ' ')}" if unit else ""
+    written = unit.replace("_per_", "/").replace("_", " ").replace("db", "dB")
+    return f"in {written}" if unit else ""
 
 
 def _parts(key: str) -> tuple[str, str]:

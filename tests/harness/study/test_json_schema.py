@@ -108,6 +108,11 @@ def test_nothing_in_the_schema_allows_null_which_study_files_cannot_say():
 
 
 ASSUMES = 'kind = "pda"\nassumes.sensor'
+LAW = (
+    'detection = { kind = "range-table", probability_over_range = [[0.0, 0.8]], '
+    "blind_range_rate_m_per_s = 2 }"
+)
+LEG = '[[scene.legs]]\nkind = "straight"\nduration_s = 3'
 
 
 @pytest.mark.parametrize(
@@ -130,6 +135,18 @@ ASSUMES = 'kind = "pda"\nassumes.sensor'
         ('kind = "pda"', f"{ASSUMES}.noise_sd_m.fctor = 3", False),
         ('kind = "pda"', f"{ASSUMES}.nose_sd_m = 3", False),
         ('kind = "pda"', f"{ASSUMES}.detection_probability = 3", False),
+        ('kind = "pda"', f"{ASSUMES}.detection.snr_db = 3", True),
+        ('kind = "pda"', f"{ASSUMES}.detection.snr_db.factor = 3", True),
+        ('kind = "pda"', f"{ASSUMES}.detection.snr = 3", False),
+        ('kind = "pda"', f"{ASSUMES}.measurement_bias = [3]", False),
+        ("detection_probability = 0.9", LAW, True),
+        ("detection_probability = 0.9", LAW.replace("0.8", "1.8"), False),
+        ("detection_probability = 0.9", LAW.replace("rate_m", "rates_m"), False),
+        ("scans = 30\nscan_interval_s = 2.0", "scan_times_s = [0.0, 3]", True),
+        ("scans = 30\nscan_interval_s = 2.0", "scan_times_s = []", False),
+        ("[strategies.pda]", f"{LEG}\n[strategies.pda]", True),
+        ("[strategies.pda]", f"{LEG.replace('straight', 'loop')}\n[strategies.pda]", False),
+        ("[strategies.pda]", "[scene.unmodelled]\nclutter_factor_sd = 1\n[strategies.pda]", True),
         ("[2.0, 4.0]", "[]", False),
         ("[2.0, 4.0]", "[true]", False),
         ("[2.0, 4.0]", "{ from = 1, to = 2, count = 3 }", True),
