@@ -19,7 +19,7 @@ from filters.compiled import (
     raising_what_compiled_code_raised,
     source_digest,
 )
-from filters.models.contract import SCALAR_OF, ClutterModel
+from filters.models.contract import SCALAR_OF
 
 ROOT = Path(compiled.__file__).resolve().parent.parent
 
@@ -32,9 +32,10 @@ def refuses_positive_places(parameters, site, measurement):
 
 
 def refusing_world():
-    world = constant_velocity_world()
-    clutter = ClutterModel(refuses_positive_places.compiled, np.array([0.1]), 0.1)
-    models = world.assumptions.models._replace(clutter=clutter)
+    world = constant_velocity_world(clutter=0.1)
+    models = world.assumptions.models
+    clutter = models.clutter._replace(intensity=refuses_positive_places.compiled)
+    models = models._replace(clutter=clutter)
     return world._replace(assumptions=world.assumptions._replace(models=models))
 
 
