@@ -74,7 +74,7 @@ def run_study(
     """
     study = study if isinstance(study, Study) else load_study(study)
     folder = results_folder(study, into)
-    claim_folder(folder)
+    claim_folder(folder, study.name)
     store_folder = folder.parent / ".store" if store is None else Path(store)
     with locked_store(store_folder) as opened:
         for path in opened.damaged:
@@ -135,7 +135,15 @@ def tables(
         ]
     except ValueError as error:
         raise ChoiceError(str(error)) from error
-    return "\n\n".join(_FORMS[form](table, width) for table in chosen)
+    text = "\n\n".join(_FORMS[form](table, width) for table in chosen)
+    if form == "terminal" and _was_changed(path, results):
+        text += "\n\nThe study file has changed since: these are the results of before."
+    return text
+
+
+def _was_changed(path: str | Path, results: Results) -> bool:
+    """Whether results were asked for by a study file that says something else by now."""
+    return Path(path).suffix == ".toml" and dict(load_study(path).document) != results.document
 
 
 def draw(
@@ -161,7 +169,7 @@ def draw(
             if key is None:
                 raise ValueError("nothing is swept in this study; leave out --metric")
             figures = figures_against(results, metric or DEFAULT_METRICS[0], key)
-        folder.mkdir(parents=True, exist_ok=True)
+        _make_folder(folder)
         return [
             path
             for stem, figure in figures.items()
@@ -187,6 +195,13 @@ def find_results(path: str | Path) -> Results:
     return load_results(results_folder(load_study(path)))
 
 
+def _make_folder(folder: Path) -> None:
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+    except OSError as error:
+        raise ChoiceError(f"{folder}: can't be a folder of figures ({error.strerror})") from error
+
+
 def _folder_of(results: Results) -> Path:
     if results.folder is None:
         raise ResultsError("these results were never written to a folder")
@@ -194,4 +209,4 @@ def _folder_of(results: Results) -> Path:
 
 
 def _telling(tell: Callable[[str], None]) -> Callable[[], None]:
-    return lambda: tell("compiling for this machine, once; it takes about half a minute")
+    return lambda: tell("getting kernels ready; compiling them, once, takes half a minute")

@@ -69,6 +69,14 @@ class Outlook:
                 f"targets are outside the sensor's region in up to {worst.outside:.1%} of scans "
                 f"({worst.label}), above 1 %; they are not detected there: widen the region"
             )
+        for condition in self.study.conditions:
+            rules = condition.rules
+            if rules.track_loss.for_scans > rules.scene.scan_count:
+                found.append(
+                    f"track_loss.for_scans is {rules.track_loss.for_scans} but a trial has "
+                    f"{rules.scene.scan_count} scans: no track can be lost"
+                )
+                break
         lost = [one for one in self.conditions if one.reference_lost > 0]
         if lost:
             worst = max(lost, key=lambda one: one.reference_lost)

@@ -104,6 +104,7 @@ def _manifest(
     finished = datetime.datetime.now(datetime.UTC)
     return {
         "format": "trackassay results 1",
+        "name": study.name,
         "study": dict(study.document),
         "file": str(study.path) if study.path else None,
         "seed": study.seed,

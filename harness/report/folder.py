@@ -17,6 +17,7 @@ from harness.trials.files import write_text_whole, write_whole
 MANIFEST = "manifest.json"
 _SUMMARY = "summary.csv"
 _SCANS = "scans.parquet"
+_FILES = {_SUMMARY, _SCANS}
 _FORMAT = "trackassay results 1"
 
 
@@ -24,10 +25,11 @@ class ResultsError(Exception):
     """A results folder that can't be used; the message says why and what to do."""
 
 
-def claim_folder(folder: Path) -> None:
-    """Make sure that results can be written to a folder, before anything is run.
+def claim_folder(folder: Path, study: str) -> None:
+    """Make sure that a study's results can be written to a folder, before anything is run.
 
-    raises      ResultsError: it holds something that is not ours, or can't be written
+    raises      ResultsError: it holds something that is not ours, another study's results, or
+                can't be written
     """
     try:
         if folder.exists() and not folder.is_dir():
@@ -36,6 +38,12 @@ def claim_folder(folder: Path) -> None:
             raise ResultsError(
                 f"{folder}: holds files but no {MANIFEST} of this tool, so nothing was written; "
                 "name another folder with --into"
+            )
+        other = _study_of(folder)
+        if other not in (None, study):
+            raise ResultsError(
+                f"{folder}: holds the results of the study {other!r}; name another folder with "
+                "--into"
             )
         folder.mkdir(parents=True, exist_ok=True)
         probe = folder / f".probe-{uuid.uuid4().hex[:8]}"
@@ -90,9 +98,9 @@ def _read_manifest(folder: Path) -> dict[str, Any]:
         manifest = json.loads(path.read_text(encoding="utf-8"))
         if manifest["format"] != _FORMAT:
             raise ResultsError(f"{path}: its format is {manifest['format']!r}, not {_FORMAT!r}")
-        if not {"study", "files"} <= manifest.keys():
+        if not manifest["study"]["strategies"].keys() or manifest["files"].keys() != _FILES:
             raise KeyError("study, files")
-    except (ValueError, KeyError, TypeError) as error:
+    except (ValueError, KeyError, TypeError, AttributeError) as error:
         raise ResultsError(
             f"{path}: damaged ({error}); run the study again to restore it"
         ) from error
@@ -100,10 +108,17 @@ def _read_manifest(folder: Path) -> dict[str, Any]:
 
 
 def _is_ours(folder: Path) -> bool:
+    """Whether a folder holds results, whole or damaged: nothing but what a run writes."""
+    names = {entry.name for entry in folder.iterdir() if not entry.name.startswith(".")}
+    return _study_of(folder) is not None or names <= {MANIFEST, *_FILES, "figures"}
+
+
+def _study_of(folder: Path) -> str | None:
+    """Name of the study whose results a folder holds; None if it can't be told."""
     try:
-        return bool(_read_manifest(folder))
-    except ResultsError:
-        return False
+        return str(_read_manifest(folder)["name"])
+    except (ResultsError, KeyError):
+        return None
 
 
 def _digest(path: Path) -> str:

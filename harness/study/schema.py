@@ -31,7 +31,7 @@ Trials = Annotated[int, Field(strict=True, ge=1, le=100_000_000)]
 MOST_SCANS = 100_000
 ScanCount = Annotated[int, Field(strict=True, ge=1, le=MOST_SCANS)]
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
-Order = Annotated[float, Field(strict=True, ge=1.0, allow_inf_nan=False)]
+Order = Annotated[float, Field(strict=True, ge=1.0, le=10.0, allow_inf_nan=False)]
 Text = Annotated[str, Field(strict=True)]
 # No dots and no quotes, so that a dotted key names one place.
 StrategyName = Annotated[str, Field(strict=True, pattern=r"^[A-Za-z0-9][A-Za-z0-9 _+-]{0,59}$")]
@@ -160,10 +160,10 @@ class TrackLoss(Record):
 class Gospa(Record):
     """Settings of the GOSPA metric (alpha = 2)."""
 
-    cutoff_m: Positive
+    cutoff_m: Annotated[Positive, Field(le=1e12)]
     """Largest position error that still counts as a localisation, m."""
     order: Order = 2
-    """The power p of the errors, at least 1."""
+    """The power p of the errors, 1 to 10."""
 
 
 class Scoring(Record):

@@ -198,6 +198,28 @@ def test_a_folder_that_cannot_be_written_is_told_before_anything_runs(command, t
     assert "can't be written" in err
 
 
+def test_results_of_another_study_are_not_overwritten(command, results):
+    other = results.parent / "other.toml"
+    other.write_text(SMOKE.read_text())
+    code, _, err = command("run", other, "--into", results, "--no-figures")
+    assert code == 2
+    assert "holds the results of the study 'smoke'" in err
+
+
+@pytest.mark.parametrize(
+    "content", ["{}", "[]", '{"format": "trackassay results 1", "study": 3, "files": []}', "\xff"]
+)
+def test_a_damaged_manifest_is_told_and_running_again_restores_it(content, command, results):
+    (results / "manifest.json").write_text(content, encoding="latin-1")
+    code, _, err = command("show", results)
+    assert code == 2
+    assert "manifest.json" in err
+    study = results.parent / "smoke.toml"
+    study.write_text(SMOKE.read_text().replace("trials = 100", "trials = 10"))
+    assert command("run", study, "--into", results, "--workers", 1, "--no-figures")[0] == 0
+    assert command("show", results)[0] == 0
+
+
 @pytest.mark.parametrize("name", ["summary.csv", "scans.parquet", "manifest.json"])
 def test_damaged_results_are_named_not_misread(name, results, command):
     path = results / name
@@ -226,6 +248,29 @@ def test_show_offers_the_nearest_metric_and_key(results, command):
     code, _, err = command("show", results, "--as", "word")
     assert code == 2
     assert "markdown" in err
+
+
+def test_figures_are_not_drawn_against_strategies(results, command):
+    code, _, err = command("draw", results, "--against", "strategy")
+    assert code == 2
+    assert "swept key" in err
+
+
+def test_figures_into_a_file_are_wrong_input(results, command, tmp_path):
+    (tmp_path / "file").write_text("")
+    code, _, err = command("draw", results, "--into", "file")
+    assert code == 2
+    assert "can't be a folder" in err
+
+
+def test_results_of_a_study_changed_since_are_said_to_be_old(command, tmp_path):
+    study = tmp_path / "mine.toml"
+    text = SMOKE.read_text().replace("trials = 100", "trials = 10")
+    study.write_text(text)
+    assert command("run", study, "--workers", 1, "--no-figures")[0] == 0
+    assert "has changed since" not in command("show", study)[1]
+    study.write_text(text.replace("trials = 10", "trials = 20"))
+    assert "has changed since" in command("show", study)[1]
 
 
 @pytest.mark.parametrize("form", ["terminal", "csv", "markdown", "latex"])

@@ -14,7 +14,7 @@ from harness.report.figures.over_time import over_time
 from harness.report.figures.panels import MOST_PANELS, panel_keys, setting_in_words
 from harness.report.figures.side_by_side import SHOWN, side_by_side
 from harness.report.quantities import metric_quantity
-from harness.report.swept import Setting, resolve, settings_of, swept_keys
+from harness.report.swept import STRATEGY, Setting, resolve, settings_of, swept_keys
 
 if TYPE_CHECKING:
     from matplotlib.figure import Figure
@@ -48,6 +48,8 @@ def figures_against(results: Results, metric: str, key: str) -> dict[str, Figure
     raises   ValueError: as `metric_against`
     """
     key = resolve(results, key)
+    if key == STRATEGY:
+        raise ValueError("figures are drawn against a swept key; name one of them, not 'strategy'")
     quantity = metric_quantity(results, metric)
     settings = _settings_of_figures(results, key)
     name = f"{quantity.name} over {swept_keys(results)[key].name}"

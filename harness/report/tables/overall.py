@@ -35,7 +35,7 @@ Measure = tuple[Column, Callable[[pd.DataFrame], Cell]]  # of a strategy's cases
 def overall_table(results: Results) -> Table:
     """What to choose a strategy by: losses, errors, honesty and cost over all conditions.
 
-    Lost tracks are pooled over the conditions (their interval is Wilson's on the pooled counts);
+    Lost tracks are pooled over the conditions, without an interval, as those share their scenes;
     'best' counts the conditions in which a strategy is not told apart from the best.
     """
     conditions = len(settings_of(results))
@@ -62,7 +62,7 @@ def _over_conditions(results: Results, conditions: int) -> list[Measure]:
     loss, error, calibration = (METRICS[metric].head for metric in (LOSS, ERROR, CALIBRATION))
     best = f"best of {conditions}"
     return [
-        (Column("all trials", loss), _pooled_loss),
+        (_bare("all", loss), _pooled_loss),
         (_bare("median", loss), lambda cases: _median(cases, LOSS)),
         (_bare("worst", loss), lambda cases: _worst(cases, LOSS)),
         (_bare("median", error), lambda cases: _median(cases, ERROR)),
@@ -134,7 +134,7 @@ def _closest(cases: pd.DataFrame, metric: str, value: float) -> Cell:
 
 def _pooled_loss(cases: pd.DataFrame) -> Cell:
     trials, lost = int((cases["trials"] - cases["failed"]).sum()), int(cases["lost"].sum())
-    low, high = wilson_interval(lost, trials)
+    low, high = wilson_interval(lost, trials)  # decides how many digits are shown, no more
     scale = METRICS[LOSS].scale
     return Cell(
         scale * lost / trials if trials else math.nan, scale * float(low), scale * float(high)
@@ -151,7 +151,8 @@ def _notes(results: Results, conditions: int) -> tuple[str, ...]:
     notes = ["RMSE and ANEES are over trials that held track; ANEES of 1 is expected."]
     if conditions > 1:
         notes = [
-            "all trials: lost tracks of all conditions pooled, with their 95 % interval (Wilson).",
+            "all: lost tracks of all conditions together, without an interval, as conditions share",
+            "their random numbers.",
             "worst ANEES: the one farthest from 1.",
             "best: in how many conditions it is best or not told apart from the best.",
             *notes,
