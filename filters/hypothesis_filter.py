@@ -19,7 +19,16 @@ from filters.hypotheses import Hypotheses, room_for_table
 from filters.linearise import Prediction
 from filters.mixture import Mixture, copy_gaussian, mixture_moments
 from filters.models.contract import Models, MotionModel
-from filters.track import Ending, Prior, Scan, Scans, Tracks, clear_estimate, past_limit, scan_of
+from filters.track import (
+    Ending,
+    Prior,
+    Scan,
+    Scans,
+    Tracks,
+    clear_estimate,
+    past_limit,
+    scan_of,
+)
 from filters.update import Gate, explain_by_component, settle
 
 ESTIMATE_MEAN = 0
@@ -184,7 +193,8 @@ def _run_trial(
 ) -> None:
     mixture, hypotheses = room.mixture, room.hypotheses
     mixture.weights[0] = 1.0
-    copy_gaussian(n, prior.mean, prior.covariance, mixture.means[0], mixture.covariances[0])
+    mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
+    copy_gaussian(n, mean, prior.covariance, mixture.means[0], mixture.covariances[0])
     count = 1
     empty_scans = 0
     for k in range(scans.intervals.shape[0]):
@@ -201,10 +211,10 @@ def _run_trial(
 
         count = strategy.reduce(hypotheses, rows, scan.origin, strategy.settings, mixture)
 
-        mean, spread = tracks.means[trial, k], tracks.covariances[trial, k]
-        _estimate(n, strategy.estimate, count, mixture, mean, spread)
+        estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
+        _estimate(n, strategy.estimate, count, mixture, estimate, spread)
         if past_limit(strategy.ending, empty_scans, spread):
-            clear_estimate(n, mean, spread)
+            clear_estimate(n, estimate, spread)
             return
         tracks.present[trial, k] = True
 

@@ -30,7 +30,16 @@ from filters.compiled import helper, kernel
 from filters.mixture import add_to_mean, clear_moments, mirror
 from filters.models.contract import Models, SensorModel
 from filters.random_numbers import STRATEGY, Numbers, fill_normals, open_at, uniform
-from filters.track import Ending, Prior, Scan, Scans, Tracks, clear_estimate, past_limit, scan_of
+from filters.track import (
+    Ending,
+    Prior,
+    Scan,
+    Scans,
+    Tracks,
+    clear_estimate,
+    past_limit,
+    scan_of,
+)
 from filters.update import HALF_LOG_TWO_PI, Gate, difference, log_or_minus_infinity
 
 # exp(-x) is no longer a number above zero.
@@ -98,14 +107,15 @@ def cloud_for(n: int, m: int, particles: int, most_detections: int) -> Cloud:
 
 
 @helper
-def _draw_from_prior(n: int, prior: Prior, numbers: Numbers, cloud: Cloud) -> None:
+def _draw_from_prior(n: int, prior: Prior, trial: int, numbers: Numbers, cloud: Cloud) -> None:
     root, normals = cloud.disturbance_root, cloud.normals
+    mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
     factorise_semidefinite(n, prior.covariance, root)
     particles = cloud.weights.shape[0]
     for i in range(particles):
         fill_normals(numbers, n, normals)
         for row in range(n):
-            value = prior.mean[row]
+            value = mean[row]
             for k in range(row + 1):
                 value += root[row, k] * normals[k]
             cloud.states[i, row] = value
@@ -360,7 +370,7 @@ def _run_trial(
         scan = scan_of(scans, models.sensor.sites, trial, k)
         open_at(numbers, first_trial + trial, STRATEGY, k)
         if k == 0:
-            _draw_from_prior(n, prior, numbers, cloud)
+            _draw_from_prior(n, prior, trial, numbers, cloud)
             cloud.filled_for[0] = math.nan
         else:
             _move(n, models, scan.interval, numbers, cloud)

@@ -17,6 +17,7 @@ class Prior(NamedTuple):
 
     mean: np.ndarray  # (n,)
     covariance: np.ndarray  # (n, n)
+    means: np.ndarray = np.empty((0, 0))  # (trials, n) in place of the mean, where not empty
 
 
 class Scans(NamedTuple):

@@ -109,7 +109,7 @@ def _look_at(keyed: KeyedCondition, seed: int) -> ConditionOutlook:
     numbers = numbers_of(seed)
     batch = draw_scenes(scene, numbers, 0, SCENES)
     strategy = KnownAssociation(kind="known-association")
-    tracks = strategy.run(assumptions_of(scene), batch.scans, numbers, 0)
+    tracks = strategy.run(assumptions_of(scene, scene, batch, numbers), batch.scans, numbers, 0)
     scores = score_span(batch.truth, tracks, tracks, keyed.rules)
     return ConditionOutlook(
         keyed.label,

@@ -18,6 +18,7 @@ from filters.strategies.strategy import Assumptions, Strategy
 from filters.track import Tracks, tracks_of
 from harness.scene.batch import SceneBatch
 from harness.scene.models import models_of
+from harness.scene.priors import prior_means
 from harness.scene.simulate import draw_scenes
 from harness.scene.truth import prior_of
 from harness.study.schema import Scene
@@ -103,7 +104,7 @@ def run_task(task: Task) -> list[SpanResult]:
             batch = draw_scenes(task.scene, numbers, spans[0].first_trial, trials)
             reference = _reference(task, batch, numbers)
             for case in task.cases:
-                tracks, us_per_scan = _run_case(case, batch, numbers)
+                tracks, us_per_scan = _run_case(task.scene, case, batch, numbers)
                 for span in spans:
                     rows = _rows_of(span, batch)
                     scores = score_span(
@@ -147,8 +148,10 @@ def run_task_safely(
         return TaskFailure(f"{type(error).__name__}: {error}", traceback.format_exc())
 
 
-def _run_case(case: TaskCase, batch: SceneBatch, numbers: Numbers) -> tuple[Tracks, float]:
-    assumptions = assumptions_of(case.assumed)
+def _run_case(
+    scene: Scene, case: TaskCase, batch: SceneBatch, numbers: Numbers
+) -> tuple[Tracks, float]:
+    assumptions = assumptions_of(case.assumed, scene, batch, numbers)
     is_told = type(case.strategy).is_told_origins
     scans = batch.scans if is_told else batch.scans_without_origins
     started = time.thread_time_ns()
@@ -157,9 +160,18 @@ def _run_case(case: TaskCase, batch: SceneBatch, numbers: Numbers) -> tuple[Trac
     return tracks, spent / 1000 / scans.origins.size
 
 
-def assumptions_of(assumed: Scene) -> Assumptions:
-    """What a strategy is told, from the scene that it assumes."""
-    return Assumptions(models_of(assumed), prior_of(assumed), assumed.target.axes)
+def assumptions_of(
+    assumed: Scene, scene: Scene, batch: SceneBatch, numbers: Numbers
+) -> Assumptions:
+    """What a strategy is told, from the scene that it assumes.
+
+    Of the scene itself only stated truth matters: the prior's means are drawn around it.
+    """
+    prior = prior_of(assumed)
+    if scene.legs is not None:
+        means = prior_means(scene, assumed, batch.truth.states, numbers, batch.first_trial)
+        prior = prior._replace(means=means)
+    return Assumptions(models_of(assumed), prior, assumed.target.axes)
 
 
 def _reference(task: Task, batch: SceneBatch, numbers: Numbers) -> Tracks | None:
@@ -167,4 +179,4 @@ def _reference(task: Task, batch: SceneBatch, numbers: Numbers) -> Tracks | None
     if task.rules.track_loss.error_above_sigma is None:
         return None
     reference = TaskCase("", KnownAssociation(kind="known-association"), task.scene)
-    return _run_case(reference, batch, numbers)[0]
+    return _run_case(task.scene, reference, batch, numbers)[0]

@@ -33,8 +33,10 @@ def task_of(strategies: tuple[Strategy, ...], first: int = 0) -> Task:
 def whole_trial_row(strategies: tuple[Strategy, ...]) -> Record:
     """Scenes, strategies, metrics and storage, against the strategies on scenes drawn before."""
     task = task_of(strategies)
-    numbers, assumptions = numbers_of(SEED), assumptions_of(SCENE)
+    numbers = numbers_of(SEED)
     batches = [draw_scenes(SCENE, numbers, 500 * half, 500) for half in range(2)]
+
+    assumptions = assumptions_of(SCENE, SCENE, batches[0], numbers)
 
     def kernels() -> None:
         for batch in batches:

@@ -1,12 +1,21 @@
 from __future__ import annotations
 
 from dataclasses import fields, replace
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
 
-from harness.study.schema import TrackLoss
-from harness.trials.task import Span, TaskFailure, run_task, run_task_safely, spans_of
+from filters.strategies import KnownAssociation, ParticleFilter, ProbabilisticDataAssociation
+from harness.study.schema import Scene, TrackLoss
+from harness.trials.task import (
+    Span,
+    TaskCase,
+    TaskFailure,
+    run_task,
+    run_task_safely,
+    spans_of,
+)
 
 
 def assert_same_bits(first, second):
@@ -88,7 +97,7 @@ def test_no_strategy_reads_the_scene_except_through_what_it_assumes(make_task):
     def draw(scene, numbers, first, trials):
         batch = simulate.draw_scenes(scene.scene, numbers, first, trials)
         drawn.append(batch)
-        scene.scene = None  # any later use raises
+        scene.scene = SimpleNamespace(legs=None)  # any other later use raises
         return batch
 
     with pytest.MonkeyPatch.context() as patch:
@@ -97,3 +106,29 @@ def test_no_strategy_reads_the_scene_except_through_what_it_assumes(make_task):
     for ours, theirs in zip(poisoned, run_task(task), strict=True):
         assert_same_bits(ours, theirs)
     assert len(drawn) == 1
+
+
+def test_along_legs_every_strategy_starts_from_a_mean_drawn_around_the_truth(make_task):
+    """Without detections the first estimate is the prior: its NEES averages the 4 dimensions.
+
+    400 trials: standard error sqrt(8 / 400) = 0.14; fails beyond 5 of them, never by chance.
+    """
+    scene = {
+        **make_task().scene.model_dump(exclude_none=True),
+        "legs": [{"kind": "straight", "duration_s": 20.0}],
+    }
+    scene["sensor"] = {**scene["sensor"], "detection_probability": 0.0}
+    scene = Scene.model_validate(scene)
+    strategies = (
+        ProbabilisticDataAssociation(kind="pda"),
+        KnownAssociation(kind="known-association"),
+        ParticleFilter(kind="particle-filter", particles=2000),
+    )
+    cases = tuple(TaskCase(one.kind, one, scene) for one in strategies)
+    spans = tuple(spans_of(400))
+    task = replace(make_task(), scene=scene, cases=cases, spans=spans)
+    totals = dict.fromkeys((case.key for case in cases), 0.0)
+    for result in run_task(task):
+        totals[result.key] += result.scores.scan_nees[0] / result.scores.scan_estimates[0] / 4
+    for key, nees in totals.items():
+        assert abs(nees - 4.0) < 5 * np.sqrt(8 / 400), key
