@@ -91,7 +91,7 @@ R = np.diag([RANGE_SD**2, math.radians(BEARING_SD_DEG) ** 2])
 
 def plain_pda(prior, scans):
     """PDA on an extended Kalman filter without a gate, by finite differences throughout."""
-    mean, P = prior
+    mean, P = prior.mean, prior.covariance
     for k, scan in enumerate(scans):
         if k > 0:
             F = jacobian(turn, mean, STEPS)
