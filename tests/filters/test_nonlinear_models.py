@@ -116,7 +116,7 @@ def turning_trial(seed, scans=25):
     """One truth and scans in which a gated false detection or two turn up."""
     rng = np.random.default_rng(seed)
     prior = turning_world().assumptions.prior
-    state = rng.multivariate_normal(*prior)
+    state = rng.multivariate_normal(prior.mean, prior.covariance)
     states, drawn, origins = [], [], []
     for k in range(scans):
         if k > 0:
