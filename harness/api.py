@@ -7,7 +7,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
 
-from harness.evidence.outlook import look_ahead, outlook_text
+from harness.evidence.outlook import Outlook, look_ahead, outlook_text
 from harness.evidence.plans import FixedCount, keyed_conditions
 from harness.evidence.results import Results
 from harness.evidence.run import run_study as run_and_summarise
@@ -22,6 +22,7 @@ from harness.report.tables.overall import overall_table
 from harness.report.tables.table import Table
 from harness.report.tables.text import as_text
 from harness.study.json_schema import study_json_schema
+from harness.study.own_sensors import find_own_files, own_sensors, try_own_sensors
 from harness.study.study import Study, load_study
 from harness.trials.driver import Progress, SetAside
 from harness.trials.store import locked_store
@@ -73,6 +74,7 @@ def run_study(
     raises      OSError: the disk is full or can't be written; what was stored stays
     """
     study = study if isinstance(study, Study) else load_study(study)
+    try_own_sensors(study)
     folder = results_folder(study, into)
     claim_folder(folder, study.name)
     store_folder = folder.parent / ".store" if store is None else Path(store)
@@ -93,9 +95,14 @@ def run_study(
 def check_study(path: str | Path, tell: Callable[[str], None] = lambda words: None) -> str:
     """What a study would run, in words, from a few scenes and no trials.
 
+    Nothing that the study names is imported, so from a sensor of the user's own nothing is drawn.
+
     raises      StudyError: the study is wrong
     """
     study = load_study(path)
+    find_own_files(study)
+    if own_sensors(study):
+        return outlook_text(Outlook(study, (), ()))
     keyed = keyed_conditions(study)
     warm_up(FixedCount(keyed, study.seed, 1, 1).next_tasks(lambda key, span: False), _telling(tell))
     return outlook_text(look_ahead(study))

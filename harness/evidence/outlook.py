@@ -19,6 +19,7 @@ from harness.evidence.plans import KeyedCondition, keyed_conditions
 from harness.scene.batch import SceneBatch
 from harness.scene.models import models_of
 from harness.scene.simulate import draw_scenes
+from harness.study.own_sensors import own_sensors
 from harness.study.schema import Scene
 from harness.study.study import Study
 from harness.trials.score import score_span
@@ -52,7 +53,10 @@ class ConditionOutlook:
 
 @dataclass(frozen=True)
 class Outlook:
-    """What a study would do; of many conditions, some spread evenly are looked at."""
+    """What a study would do; of many conditions, some spread evenly are looked at.
+
+    conditions  none where the sensor is one of the user's own: its file is not imported
+    """
 
     study: Study
     conditions: tuple[ConditionOutlook, ...]
@@ -171,6 +175,10 @@ def outlook_text(outlook: Outlook) -> str:
             ("scans", _scan_words(scene)),
         ]
     )  # fmt: skip
+    if not seen:
+        names = ", ".join(own_sensors(study))
+        words = f"The study names {names}, which is not imported to check it:"
+        return "\n".join([*lines, "", words, "what its scenes are like shows when it is run."])
     lines += ["", f"From {SCENES} scenes of each condition" + _which(seen, study) + ":"]
     lines += _aligned(
         [

@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
+from pathlib import Path
 from typing import Any
 
 from pydantic import ValidationError
 
 from filters.models.over_range import OVER_RANGE
 from filters.models.record import Record
+from filters.models.sensor.own import FOLDER, OwnSensor
 from filters.models.sensor.sensor import Sensor
 from harness.study.keys import (
     ASSUMABLE,
@@ -49,7 +51,7 @@ def assumption_findings(assumes: Any, scene: Any, base: KeyPath) -> list[Finding
     return findings
 
 
-def assumed_scene(scene: Scene, assumes: Mapping[str, Any], base: KeyPath) -> Scene:
+def assumed_scene(scene: Scene, assumes: Mapping[str, Any], base: KeyPath, folder: Path) -> Scene:
     """Return the scene that a strategy assumes.
 
     What is not named is as in the scene. Where a kind differs, only keys that the new kind has are
@@ -57,6 +59,7 @@ def assumed_scene(scene: Scene, assumes: Mapping[str, Any], base: KeyPath) -> Sc
     told to no strategy is left out.
 
     base        path of `assumes` in the study
+    folder      of the study's file
     raises      Findings
     """
     if not assumes:
@@ -65,11 +68,11 @@ def assumed_scene(scene: Scene, assumes: Mapping[str, Any], base: KeyPath) -> Sc
     for role, stated in assumes.items():
         parts[role] = _overlaid(_SCENE.fields[role], parts[role], stated, (*base, role))
     try:
-        assumed = Scene.model_validate(parts)
+        assumed = Scene.model_validate(parts, context={FOLDER: folder})
     except ValidationError as error:
         findings = findings_of(error, _SCENE, base)
         raise Findings(_of_factors(finding, assumes, base) for finding in findings) from None
-    if _measured(assumed.sensor) != _measured(scene.sensor):
+    if not _measure_alike(assumed.sensor, scene.sensor):
         raise Findings(
             [
                 Finding(
@@ -115,9 +118,8 @@ def _table_of(node: Node, record: Record, stated: Mapping[str, Any]) -> Table | 
     """Return the table of the kind that is stated, or else the record's own."""
     if not isinstance(node, Choice):
         return node if isinstance(node, Table) else None
-    said = stated.get(str(node.tag), getattr(record, str(node.tag)))
-    is_known = isinstance(said, str) and said in node.options
-    return node.tables({node.tag: said})[0] if is_known else None
+    table = node.chosen({node.tag: stated.get(str(node.tag), getattr(record, str(node.tag)))})
+    return table if isinstance(table, Table) else None
 
 
 def _multiplied(key: str, value: Any, factor: float) -> Any:
@@ -147,10 +149,11 @@ def _is_plain(value: Any) -> bool:
     return isinstance(value, int | float | tuple)
 
 
-def _measured(sensor: Sensor) -> tuple[list[str], int]:
-    """What a measurement consists of, by the keys of its region, and how many numbers it has."""
-    keys = [key for key in type(sensor).model_fields if key.startswith("region_")]
-    return keys, sensor.measurement_size
+def _measure_alike(sensor: Sensor, other: Sensor) -> bool:
+    """Whether two sensors measure the same; one of the user's own is known by its units only."""
+    if isinstance(sensor, OwnSensor) or isinstance(other, OwnSensor):
+        return sensor.measured_units() == other.measured_units()
+    return type(sensor).components == type(other).components and sensor.axes == other.axes
 
 
 def _nothing_to_multiply(record: Any, key: str, path: KeyPath) -> Finding:

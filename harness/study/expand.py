@@ -9,10 +9,12 @@ from __future__ import annotations
 import itertools
 from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 from pydantic import TypeAdapter, ValidationError
 
+from filters.models.sensor.own import FOLDER
 from filters.strategies.strategy import Strategy
 from harness.study.assumed import assumed_scene
 from harness.study.blame import blamed
@@ -65,13 +67,16 @@ class Versions:
         return self.records[tuple(steps.get(axis, 0) for axis in self.axes)]
 
 
-def conditions_of(document: Mapping[str, Any], axes: Sequence[Axis]) -> tuple[Condition, ...]:
+def conditions_of(
+    document: Mapping[str, Any], axes: Sequence[Axis], folder: Path
+) -> tuple[Condition, ...]:
     """Return the conditions that a checked document and its axes make; the last axis is fastest.
 
+    folder      of the study's file
     raises      Findings, at the sweeps: a swept value or a combination of them does not fit
     """
-    scene, strategies, scoring = _tables(document, axes)
-    assumed = _assumed_scenes(scene, strategies, axes)
+    scene, strategies, scoring = _tables(document, axes, folder)
+    assumed = _assumed_scenes(scene, strategies, axes, folder)
 
     def condition(steps: Steps) -> Condition:
         here = {name: versions.at(steps) for name, versions in strategies.items()}
@@ -90,7 +95,7 @@ def conditions_of(document: Mapping[str, Any], axes: Sequence[Axis]) -> tuple[Co
 
 
 def _tables(
-    document: Mapping[str, Any], axes: Sequence[Axis]
+    document: Mapping[str, Any], axes: Sequence[Axis], folder: Path
 ) -> tuple[Versions, dict[str, Versions], dict[str, Versions]]:
     """Return the versions of the scene, of each strategy and of each table of scoring."""
     findings: list[Finding] = []
@@ -106,7 +111,7 @@ def _tables(
             findings.extend(found.findings)
             return Versions((), {})
 
-    scene = versions(("scene",), Scene.model_validate)
+    scene = versions(("scene",), lambda raw: Scene.model_validate(raw, context={FOLDER: folder}))
     strategies = {
         name: versions(("strategies", name), _STRATEGY.validate_python)
         for name in document["strategies"]
@@ -122,7 +127,7 @@ def _tables(
 
 
 def _assumed_scenes(
-    scene: Versions, strategies: Mapping[str, Versions], axes: Sequence[Axis]
+    scene: Versions, strategies: Mapping[str, Versions], axes: Sequence[Axis], folder: Path
 ) -> dict[str, Versions]:
     """Return the assumed scenes of the strategies that assume something of their own."""
     findings: list[Finding] = []
@@ -133,7 +138,7 @@ def _assumed_scenes(
         base = ("strategies", name, "assumes")
 
         def record(steps: Steps, strategy: Versions = strategy, base: KeyPath = base) -> Scene:
-            return assumed_scene(scene.at(steps), strategy.at(steps).assumes, base)
+            return assumed_scene(scene.at(steps), strategy.at(steps).assumes, base, folder)
 
         changing = tuple(sorted({*scene.axes, *_axes_under(base, axes)}))
         try:

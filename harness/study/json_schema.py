@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from typing import Any
 
+from filters.models.sensor.own import OWN_KIND
 from harness.study.keys import ASSUMABLE, Choice, Node, Table, is_numeric, tables_of
-from harness.study.schema import Scene, StudyDocument
+from harness.study.schema import OWN, Scene, StudyDocument
 
 Schema = dict[str, Any]
 
@@ -108,8 +109,15 @@ def _changeable(node: Node, definitions: Schema) -> Schema:
             else:
                 keys[key] = _or_factor(stated, child)
     if isinstance(node, Choice):
-        keys[str(node.tag)] = {"enum": list(node.options), "title": node.tag}
+        keys[str(node.tag)] = _kinds(node)
     return {"type": "object", "properties": keys, "additionalProperties": False}
+
+
+def _kinds(choice: Choice) -> Schema:
+    kinds: Schema = {"enum": [kind for kind in choice.options if kind != OWN]}
+    if OWN in choice.options:
+        kinds = {"anyOf": [kinds, {"type": "string", "pattern": OWN_KIND}]}
+    return {**kinds, "title": choice.tag, "description": "Which kind it is."}
 
 
 def _or_factor(stated: Schema, node: Node) -> Schema:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import functools
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from types import NoneType, UnionType
 from typing import Annotated, Any, Literal, Union, get_args, get_origin
@@ -14,7 +14,7 @@ from pydantic.fields import FieldInfo
 from filters.models.record import Record
 from filters.strategies.strategy import Strategy
 from harness.study.mistakes import KeyPath
-from harness.study.schema import Scene, StudyDocument
+from harness.study.schema import KindOrFile, Scene, StudyDocument
 
 ASSUMABLE = ("target", "sensor")  # what of a scene a strategy may be told otherwise
 
@@ -77,11 +77,17 @@ class Choice:
 
     tag: str | None
     options: Mapping[str, Node]
+    choose: Callable[[Any], str | None] | None = None  # from a raw value, if not by the tag alone
+
+    def chosen(self, raw: Any) -> Node | None:
+        """What a raw value chooses, None while it chooses none of them."""
+        said = raw.get(self.tag) if isinstance(raw, Mapping) else None
+        option = self.choose(raw) if self.choose is not None else said
+        return self.options.get(option) if isinstance(option, str) else None
 
     def tables(self, raw: Any) -> list[Table]:
         """The table that a raw value chooses; all, while it chooses none of them."""
-        said = raw.get(self.tag) if isinstance(raw, Mapping) else None
-        chosen = self.options.get(said) if isinstance(said, str) else None
+        chosen = self.chosen(raw)
         nodes = self.options.values() if chosen is None else [chosen]
         return [node for node in nodes if isinstance(node, Table)]
 
@@ -225,7 +231,15 @@ def _fields_of(record: type[Record]) -> Mapping[str, Node]:
 
 
 def _choice(members: list[Any], notes: tuple[Any, ...]) -> Node:
-    tags = [note.discriminator for note in notes if isinstance(note, FieldInfo | Discriminator)]
+    inner = [one for note in notes if isinstance(note, FieldInfo) for one in note.metadata]
+    tags = [
+        note.discriminator
+        for note in (*notes, *inner)
+        if isinstance(note, FieldInfo | Discriminator)
+    ]
+    by_file = next((tag for tag in tags if isinstance(tag, KindOrFile)), None)
+    if by_file is not None:
+        return Choice(by_file.key, {_form_of(one): node_of(one) for one in members}, by_file)
     tag = next((tag for tag in tags if isinstance(tag, str)), None)
     if tag is not None:
         options = {

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Annotated, Any, Literal, Self, Union
+import re
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Annotated, Any, Literal, Self, Union, get_args
 
 import numpy as np
 from pydantic import Discriminator, Field, Tag, model_validator
@@ -10,12 +12,35 @@ from pydantic import Discriminator, Field, Tag, model_validator
 from filters.models.motion import MOTIONS
 from filters.models.motion.target import Target
 from filters.models.record import BadValue, Count, Positive, Real, Record, Ways, within
-from filters.models.sensor import SENSORS
+from filters.models.sensor import SENSORS, OwnSensor
+from filters.models.sensor.own import OWN_KIND
 from filters.models.sensor.sensor import Sensor
 from filters.strategies import STRATEGIES
 from filters.strategies.strategy import Strategy
 from harness.study.legs import AnyLeg, check_legs
 from harness.study.unmodelled import Unmodelled
+
+OWN = "FILE.py:NAME"  # stands for all sensors of a user's own among the kinds
+
+
+class KindOrFile:
+    """Tells sensors apart by their kind; FILE.py:NAME is one of the user's own."""
+
+    key = "kind"
+    __name__ = "kind_or_file"  # pydantic asks for it
+
+    def __call__(self, raw: Any) -> str | None:
+        """Return the kind that is said, in text."""
+        said = raw.get(self.key) if isinstance(raw, Mapping) else getattr(raw, self.key, None)
+        if isinstance(said, str):
+            return OWN if re.match(OWN_KIND, said) else said
+        return None if said is None else repr(said)
+
+
+SENSOR_KINDS: dict[str, type[Sensor]] = {
+    **{get_args(record.model_fields["kind"].annotation)[0]: record for record in SENSORS},
+    OWN: OwnSensor,
+}
 
 if TYPE_CHECKING:
     AnyTarget = Target
@@ -23,7 +48,8 @@ if TYPE_CHECKING:
     AnyStrategy = Strategy
 else:  # unions over whatever the catalogues hold
     AnyTarget = Annotated[Union[MOTIONS], Field(discriminator="motion")]  # noqa: UP007
-    AnySensor = Annotated[Union[SENSORS], Field(discriminator="kind")]  # noqa: UP007
+    _tagged = tuple(Annotated[record, Tag(kind)] for kind, record in SENSOR_KINDS.items())
+    AnySensor = Annotated[Union[_tagged], Discriminator(KindOrFile())]  # noqa: UP007
     AnyStrategy = Annotated[Union[STRATEGIES], Field(discriminator="kind")]  # noqa: UP007
 
 Seed = Annotated[int, Field(strict=True, ge=0, lt=2**63)]

@@ -10,6 +10,7 @@ from typing import Any
 
 from pydantic import ValidationError
 
+from filters.models.sensor.own import FOLDER
 from harness.study.assumed import assumed_scene, assumption_findings
 from harness.study.blame import closeness, laid_at
 from harness.study.expand import Condition, conditions_of
@@ -145,6 +146,7 @@ def study_from(document: Mapping[str, Any], name: str = "study") -> Study:
 
 
 def _study(document: dict[str, Any], name: str, path: Path | None) -> Study:
+    folder = Path() if path is None else path.parent
     groups = swept_groups(document)
     known = keys_of(document)
     filled, first_values = with_first_values(document, groups, known)
@@ -154,15 +156,16 @@ def _study(document: dict[str, Any], name: str, path: Path | None) -> Study:
         *_assumption_findings(filled),
     ]
     try:
-        record = StudyDocument.model_validate(filled)
+        record = StudyDocument.model_validate(filled, context={FOLDER: folder})
     except ValidationError as error:
         found = _at_their_sweeps(findings_of(error, STUDY), document, first_values)
         raise Findings(findings + _not_yet_said(found, findings)) from None
     if not findings:
-        findings = _wrong_assumed_scenes(record)
+        findings = _wrong_assumed_scenes(record, folder)
     if findings:
         raise Findings(findings)
-    return Study(name, path, document, record, conditions_of(filled, axes_of(groups, known)))
+    conditions = conditions_of(filled, axes_of(groups, known), folder)
+    return Study(name, path, document, record, conditions)
 
 
 def _assumption_findings(document: Mapping[str, Any]) -> list[Finding]:
@@ -177,11 +180,11 @@ def _assumption_findings(document: Mapping[str, Any]) -> list[Finding]:
     ]
 
 
-def _wrong_assumed_scenes(record: StudyDocument) -> list[Finding]:
+def _wrong_assumed_scenes(record: StudyDocument, folder: Path) -> list[Finding]:
     findings: list[Finding] = []
     for name, strategy in record.strategies.items():
         try:
-            assumed_scene(record.scene, strategy.assumes, ("strategies", name, "assumes"))
+            assumed_scene(record.scene, strategy.assumes, ("strategies", name, "assumes"), folder)
         except Findings as found:
             findings += found.findings
     return findings

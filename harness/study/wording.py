@@ -46,6 +46,8 @@ def _finding(detail: Detail, root: Node, base: KeyPath) -> Finding:
         table, home = _surroundings(detail["loc"], root)
         return Finding(path, *unknown_key(str(path[-1]), [table], home))
     if kind == "union_tag_not_found" and isinstance(node, Choice):
+        if node.tag is not None and not isinstance(given, Mapping):
+            return Finding(path, *_TABLE, given)
         return _no_choice(node, path, given)
     if kind == "union_tag_invalid" and isinstance(node, Choice):
         return _unknown_choice(node, path, given)

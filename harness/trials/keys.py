@@ -63,8 +63,19 @@ def platform_words() -> tuple[str, ...]:
 
 
 def scene_key(scene: Scene, seed: int) -> str:
-    """Key of a condition's scenes."""
-    return digest([scene.model_dump(), str(seed), platform_words(), source_digest(*_SCENE_SOURCES)])
+    """Key of a condition's scenes.
+
+    raises      OwnFileError: a sensor's own file is not there
+    """
+    return digest(
+        [
+            scene.model_dump(),
+            scene.sensor.code_digest(),
+            str(seed),
+            platform_words(),
+            source_digest(*_SCENE_SOURCES),
+        ]
+    )
 
 
 def rules_key(rules: ScoringRules) -> str:
@@ -86,6 +97,7 @@ def case_key(scenes: str, case: Case, rules: str) -> str:
             scenes,
             case.strategy.model_dump(exclude={"assumes"}),
             case.assumed.model_dump(),
+            case.assumed.sensor.code_digest(),
             rules,
             source_digest(*_STRATEGY_SOURCES),
         ]

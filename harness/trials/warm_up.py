@@ -38,7 +38,8 @@ def warm_up(tasks: Iterable[Task], tell: Callable[[], None] = lambda: None) -> N
 def _models(scene: Scene) -> tuple[object, ...]:
     sensor = scene.sensor
     parts = (scene.target, sensor, sensor.detection, sensor.clutter)
-    return scene.target.axes, scene.legs is None, *map(type, parts)
+    own_code = sensor.code_digest()
+    return scene.target.axes, scene.legs is None, own_code, *map(type, parts)
 
 
 def _shortest(task: Task, case: TaskCase) -> Task:

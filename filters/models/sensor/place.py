@@ -51,6 +51,10 @@ class Place(Record):
         stated |= {f"sites_m[{i}]": site for i, site in enumerate(self.sites_m or ())}
         return {key: place for key, place in stated.items() if place is not None}
 
+    def axes_of_place(self) -> int:
+        """Number of axes of the first place that is stated; 2 if none is."""
+        return len(next(iter(self.stated_places().values()), (0.0, 0.0)))
+
     def sites(self, axes: int, times: np.ndarray) -> np.ndarray:
         """Position and velocity at each scan, (scans, 2 axes) SI; (1, 2 axes) if it stays.
 

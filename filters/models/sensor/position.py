@@ -72,6 +72,10 @@ class PositionSensor(Sensor):
         """Metres."""
         return np.ones(self.axes)
 
+    def measured_units(self) -> tuple[str, ...]:
+        """Metres."""
+        return ("m",) * self.axes
+
     def periods(self) -> np.ndarray:
         """Nothing wraps."""
         return np.zeros(self.axes)

@@ -47,4 +47,4 @@ class RangeSensor(Sensor):
     @property
     def axes(self) -> int:
         """As many as its first place has."""
-        return len(next(iter(self.stated_places().values()), (0.0, 0.0)))
+        return self.axes_of_place()

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from typing import TYPE_CHECKING, Annotated, ClassVar, Self, Union
+from typing import TYPE_CHECKING, Annotated, Any, ClassVar, Self, Union
 
 import numpy as np
 from pydantic import Field, model_validator
@@ -89,6 +89,10 @@ class Sensor(Place):
         stated = [getattr(self, f"noise_sd_{component}") for component in self.components]
         return np.array(stated, float) * self.units()
 
+    def measured_units(self) -> tuple[str, ...]:
+        """Unit of each component of the measurement in words."""
+        return tuple(map(_unit, self.components))
+
     def measurement_space(self) -> MeasurementSpace:
         """Where the detections lie."""
         names = self.components
@@ -99,6 +103,23 @@ class Sensor(Place):
             range_component=names.index("range_m") if "range_m" in names else None,
             is_position=False,
         )
+
+    def own_parameters(self) -> np.ndarray:
+        """Numbers that the measurement itself needs, behind those of the noise."""
+        return np.empty(0)
+
+    def model_parameters(self) -> np.ndarray:
+        """Parameters of all functions of the sensor."""
+        noise = noise_parameters(self.noise_deviations(), self.noise_factor_over_range)
+        return np.concatenate([noise, self.own_parameters()])
+
+    def functions(self) -> tuple[Any, Any]:
+        """Measurement and Jacobian as kernels take them."""
+        return self.measure.compiled, self.jacobian.compiled
+
+    def code_digest(self) -> str:
+        """Digest of code that is no part of the project; empty without any."""
+        return ""
 
     @property
     def measurement_size(self) -> int:
@@ -118,11 +139,10 @@ class Sensor(Place):
         noise = noise_over_range if is_growing else independent_noise
         centre, half_width = np.split(self.measurement_space().box, 2)
         return SensorModel(
-            self.measure.compiled,
-            self.jacobian.compiled,
+            *self.functions(),
             noise.compiled,
             not is_growing,
-            noise_parameters(self.noise_deviations(), self.noise_factor_over_range),
+            self.model_parameters(),
             self.sites(self.axes, times),
             self.periods(),
             centre,
@@ -213,5 +233,5 @@ class Sensor(Place):
 
 def _unit(component: str) -> str:
     """Unit of a component in words."""
-    words = {"_deg": "degrees", "_m_per_s": "m/s", "_m": "m"}
+    words = {"_deg": "deg", "_m_per_s": "m/s", "_m": "m"}
     return next(unit for ending, unit in words.items() if component.endswith(ending))
