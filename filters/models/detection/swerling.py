@@ -35,7 +35,8 @@ from filters.models.geometry import range_between
 from filters.models.record import Positive, Real
 
 # Swerling 0 is a table of PD and its slope against sqrt(S), cubic between: 45 ns a value, no more
-# than Swerling 1, where a series takes 300 ns and more as S grows. It is exact to 3e-11 at this step.
+# than Swerling 1, where a series takes 300 ns and more as S grows. At this step it is exact to
+# 3e-11.
 _STEP = 1.0 / 128.0
 # 1 - PD < exp(-(sqrt(S) - sqrt(T))^2), so beyond this many units above sqrt(T) it is 1.
 _BEYOND_THRESHOLD = 5.5
