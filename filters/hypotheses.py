@@ -13,7 +13,7 @@ from typing import Any, NamedTuple
 import numpy as np
 from numba import from_dtype, types
 
-from filters.compiled import COMPILING, helper
+from filters.compiled import helper
 from filters.mixture import Mixture
 from filters.models.contract import MATRIX, VECTOR
 
@@ -33,12 +33,6 @@ HYPOTHESIS = np.dtype(
     ],
     align=True,
 )
-
-
-def room_for_table(rows: int) -> np.ndarray:
-    """An empty table; plain Python needs records with attributes where compiled code does not."""
-    table = np.zeros(rows, HYPOTHESIS)
-    return table if COMPILING else table.view(np.recarray)
 
 
 class Hypotheses(NamedTuple):

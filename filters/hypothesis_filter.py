@@ -15,10 +15,11 @@ import numpy as np
 
 from filters.compiled import helper, kernel
 from filters.gaussian import predict_covariance
-from filters.hypotheses import Hypotheses, room_for_table
-from filters.linearise import Prediction
+from filters.hypotheses import HYPOTHESIS, Hypotheses
+from filters.linearise import room_for_prediction
 from filters.mixture import Mixture, copy_gaussian, mixture_moments
 from filters.models.contract import Models, MotionModel
+from filters.records import zeroed_records
 from filters.track import (
     Ending,
     Prior,
@@ -51,13 +52,8 @@ class Room(NamedTuple):
 
     mixture: Mixture
     hypotheses: Hypotheses
-    prediction: Prediction
-    mean: Any  # (n,) predicted
-    transition: Any  # (n, n) Jacobian of the motion
-    disturbance: Any  # (n, n) process noise
-    filled_for: Any  # (1,) s, the interval of these two; kept while the motion is linear
-    square: Any  # (n, n)
-    differences: Any  # (2, m)
+    prediction: Any  # see room_for_prediction
+    step: Any  # see _room_for_step
 
 
 def room_for(n: int, m: int, capacity: int, most_detections: int) -> Room:
@@ -66,46 +62,48 @@ def room_for(n: int, m: int, capacity: int, most_detections: int) -> Room:
     return Room(
         Mixture(np.empty(capacity), np.empty((capacity, n)), np.empty((capacity, n, n))),
         Hypotheses(
-            room_for_table(most_rows),
+            zeroed_records(most_rows, HYPOTHESIS),
             np.empty((most_rows, n)),
             np.empty((2 * capacity, n, n)),
             np.empty((n + 2, n)),
         ),
-        Prediction(
-            np.empty(m),
-            np.empty((m, n)),
-            np.empty((m, m)),
-            np.empty((n, m)),
-            np.empty((m, m)),
-            np.empty((m, m)),
-            np.empty((n, m)),
-            np.empty((2, n, n)),
-            np.zeros(1, np.bool_),
-        ),
-        np.empty(n),
-        np.empty((n, n)),
-        np.empty((n, n)),
-        np.full(1, np.nan),
-        np.empty((n, n)),
-        np.empty((2, m)),
+        room_for_prediction(n, m),
+        _room_for_step(n, m),
     )
+
+
+def _room_for_step(n: int, m: int) -> np.ndarray:
+    """Room for moving one component on and comparing it with detections: one record."""
+    room = zeroed_records(
+        1,
+        [
+            ("expected", float, (n,)),  # mean after the interval
+            ("transition", float, (n, n)),  # Jacobian of the motion
+            ("disturbance", float, (n, n)),  # process noise
+            ("filled_for", float),  # s, the interval of these two; kept while the motion is linear
+            ("square", float, (n, n)),
+            ("differences", float, (2, m)),
+        ],
+    )
+    room["filled_for"] = math.nan
+    return room
 
 
 @helper
 def _predict(n: int, motion: MotionModel, interval: float, component: int, room: Room) -> None:
     """Move one component on over an interval."""
-    before = room.mixture.means[component]
-    if not motion.linear or room.filled_for[0] != interval:
-        motion.jacobian(motion.parameters, interval, before, room.transition)
-        motion.process_noise(motion.parameters, interval, before, room.disturbance)
-        room.filled_for[0] = interval
-    motion.transition(motion.parameters, interval, before, room.mean)
+    before, step = room.mixture.means[component], room.step[0]
+    if not motion.linear or step.filled_for != interval:
+        motion.jacobian(motion.parameters, interval, before, step.transition[:])
+        motion.process_noise(motion.parameters, interval, before, step.disturbance[:])
+        step.filled_for = interval
+    motion.transition(motion.parameters, interval, before, step.expected[:])
     predict_covariance(
         n,
-        room.transition,
-        room.disturbance,
+        step.transition,
+        step.disturbance,
         room.mixture.covariances[component],
-        room.square,
+        step.square,
         room.hypotheses.covariances[2 * component],
     )
 
@@ -115,7 +113,7 @@ def _explain(
     n: int, m: int, models: Models, gate: Gate, scan: Scan, count: int, is_first: bool, room: Room
 ) -> int:
     """Fill the table of hypotheses of one scan; the prior holds at the first scan as it is."""
-    mixture, hypotheses = room.mixture, room.hypotheses
+    mixture, hypotheses, step = room.mixture, room.hypotheses, room.step[0]
     rows = 0
     for component in range(count):
         if is_first:
@@ -123,7 +121,7 @@ def _explain(
                 n,
                 mixture.means[component],
                 mixture.covariances[component],
-                room.mean,
+                step.expected,
                 hypotheses.covariances[2 * component],
             )
         else:
@@ -136,11 +134,11 @@ def _explain(
             scan,
             component,
             mixture.weights[component],
-            room.mean,
+            step.expected[:],
             hypotheses,
             rows,
-            room.prediction,
-            room.differences,
+            room.prediction[0],
+            step.differences,
         )
     settle(hypotheses, rows, mixture.weights)
     return rows

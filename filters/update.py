@@ -22,7 +22,7 @@ from typing import Any, NamedTuple
 from filters.cholesky import inverse_root_determinant, squared_distance
 from filters.compiled import helper
 from filters.hypotheses import NOT_DETECTED, Hypotheses, normalise
-from filters.linearise import Prediction, first_order
+from filters.linearise import first_order
 from filters.models.contract import Models
 from filters.track import ORIGIN_UNKNOWN, Scan
 
@@ -64,7 +64,7 @@ def explain_by_component(
     mean: Any,
     hypotheses: Hypotheses,
     rows: int,
-    prediction: Prediction,
+    prediction: Any,
     work: Any,
 ) -> int:
     """Append the hypotheses of one component to the table.
