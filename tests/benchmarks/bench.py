@@ -1,4 +1,4 @@
-"""How fast: `python tests/benchmarks/bench.py [--out bench.json]`, about a minute on one core.
+"""How fast: `python tests/benchmarks/bench.py [--out bench.json]`, a minute or two.
 
 A group of rows is a function from the drawn scenes to records; GROUPS lists them. Times are the
 best of interleaved repeats. Trackers that are compared must first give the same estimates.
@@ -204,7 +204,7 @@ def main() -> None:
     print(
         f"{here}\n"
         f"One core, 4 states, 2 measured numbers, {CLUTTER_PER_SCAN:g} false detections a scan and "
-        f"the target's own.\n{TRIALS} trials of {SCANS} scans; the best of interleaved repeats.\n",
+        f"the target's own.\n{TRIALS} trials of {SCANS} scans; the best of interleaved repeats; spread is worst over best.\n",
         flush=True,
     )
     with threadpool_limits(1):

@@ -41,7 +41,7 @@ def interleaved(*things: Callable[[], object], repeats: int) -> list[Timing]:
 
 def table(records: list[Record]) -> str:
     """Plain aligned text, at most 100 columns wide."""
-    head = ("", "us", "against", "times faster", "wanted", "worst/best")
+    head = ("", "us", "against", "times faster", "wanted", "spread")
     rows = [head, *(_cells(record) for record in records)]
     widths = [max(map(len, column)) for column in zip(*rows, strict=True)]
     left = (0, 2)  # columns of words
