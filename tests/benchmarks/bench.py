@@ -204,7 +204,8 @@ def main() -> None:
     print(
         f"{here}\n"
         f"One core, 4 states, 2 measured numbers, {CLUTTER_PER_SCAN:g} false detections a scan and "
-        f"the target's own.\n{TRIALS} trials of {SCANS} scans; the best of interleaved repeats; spread is worst over best.\n",
+        f"the target's own.\n{TRIALS} trials of {SCANS} scans; the best of interleaved repeats; "
+        "spread is worst over best.\n",
         flush=True,
     )
     with threadpool_limits(1):
