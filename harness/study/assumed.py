@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Iterable, Mapping
 from pathlib import Path
 from typing import Any
@@ -220,6 +221,6 @@ def _factor_findings(node: Node, stated: Mapping[str, Any], path: KeyPath) -> li
         return [Finding((*path, "factor"), "multiplies what is no number", "give a value instead")]
     factor = stated["factor"]
     is_number = isinstance(factor, int | float) and not isinstance(factor, bool)
-    if not is_number or not abs(factor) < float("inf"):
+    if not is_number or not abs(factor) <= sys.float_info.max:
         return [Finding((*path, "factor"), *wrong_value("factor", FACTOR, factor))]
     return []

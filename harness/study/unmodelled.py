@@ -12,7 +12,10 @@ Persistence = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0.0, l
 
 
 class PersistentClutter(Record):
-    """False detections that come back: points that stay for a time and show at some scans."""
+    """False detections that come back: points that stay for a time and show at some scans.
+
+    A point keeps its place in the measurement, so one seen from a moving sensor moves with it.
+    """
 
     expected_number: NonNegative
     """Expected number of such points in the region at any time, spread evenly over it."""

@@ -128,5 +128,8 @@ class OwnSensor(Sensor):
                 )
         for place, ends in enumerate(self.measurement_region):
             key, unit = f"measurement_region[{place}]", self.measurement_units[place]
-            check_angles(key, ends) if unit == "deg" else check_ends(key, ends, "its unit")
+            if unit == "deg":
+                check_angles(key, ends)
+            else:
+                check_ends(key, ends, "its unit")
         return self

@@ -182,7 +182,10 @@ class Sensor(Place):
     def _region_has_extent(self) -> Self:
         for name in self.components:
             key, ends = f"region_{name}", getattr(self, f"region_{name}")
-            check_angles(key, ends) if name in self.wrapping else check_ends(key, ends, _unit(name))
+            if name in self.wrapping:
+                check_angles(key, ends)
+            else:
+                check_ends(key, ends, _unit(name))
         return self
 
     @model_validator(mode="after")

@@ -514,6 +514,11 @@ WRONG_ASSUMPTIONS = {
         f"{AT}.sensor.detection.false_alarm_probability.factor = 100000.0: makes it 10.0, "
         "which must lie in (0, 1); give a probability, 0.1 for 10 %",
     ),
+    "a factor beyond all floating-point numbers": (
+        RADAR,
+        f"assumes.sensor.detection.snr_db.factor = 1{'0' * 400}",
+        f"{AT}.sensor.detection.snr_db.factor = 1{'0' * 55} ...: must be finite; give a number",
+    ),
     "another clutter beside the scene's false alarms": (
         RADAR,
         "assumes.sensor.clutter_per_scan = 3.0",
