@@ -24,6 +24,9 @@ _SCENE_SOURCES = (
     "filters/random_numbers.py",
     "filters/cholesky.py",
     "harness/scene",
+    "harness/study/legs.py",
+    "harness/study/schema.py",
+    "harness/study/unmodelled.py",
     "harness/trials/task.py",
 )
 _STRATEGY_SOURCES = ("filters",)

@@ -1,10 +1,12 @@
 from __future__ import annotations
 
+import ast
 from pathlib import Path
 
 import trackassay
 from harness.evidence.outlook import look_ahead
 from harness.evidence.plans import FixedCount, keyed_conditions
+from harness.trials import keys
 
 SMOKE = trackassay.load_study(Path(__file__).parents[3] / "studies" / "smoke.toml")
 
@@ -59,6 +61,24 @@ def test_keys_cover_what_results_depend_on_and_nothing_else():
     assert [ours == theirs for ours, theirs in zip(gate[0], base[0], strict=True)] == [
         True, False, True, True,
     ]  # fmt: skip
+
+
+def test_the_key_of_scenes_covers_every_source_that_draws_them():
+    """What the drawing of scenes imports from the harness must make stored scores stale."""
+    root = Path(__file__).parents[3]
+    covered = {
+        path
+        for source in keys._SCENE_SOURCES
+        for path in ([root / source] if source.endswith(".py") else (root / source).rglob("*.py"))
+    }
+    drawing = [*(root / "harness" / "scene").glob("*.py"), root / "harness" / "study" / "schema.py"]
+    imported = {
+        root / (node.module.replace(".", "/") + ".py")
+        for path in drawing
+        for node in ast.walk(ast.parse(path.read_text()))
+        if isinstance(node, ast.ImportFrom) and node.module.startswith("harness.")
+    }
+    assert imported <= covered
 
 
 def test_assuming_what_is_true_anyway_changes_no_key():
