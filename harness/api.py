@@ -10,7 +10,7 @@ from pathlib import Path
 from harness.evidence.outlook import Outlook, look_ahead, outlook_text
 from harness.evidence.plans import FixedCount, keyed_conditions
 from harness.evidence.results import Results
-from harness.evidence.run import run_study as run_and_summarise
+from harness.evidence.run import run_plan
 from harness.report.figures import all_figures, figures_against, save_figure
 from harness.report.figures.default_set import main_key
 from harness.report.folder import ResultsError, claim_folder, load_results, write_results
@@ -26,7 +26,7 @@ from harness.study.own_sensors import find_own_files, own_sensors, try_own_senso
 from harness.study.study import Study, load_study
 from harness.trials.driver import Progress, SetAside
 from harness.trials.store import locked_store
-from harness.trials.warm_up import warm_up
+from harness.trials.warm_up import telling_if_slow, warm_up
 from harness.trials.workers import local_workers
 
 RESULTS = Path("results")
@@ -87,7 +87,7 @@ def run_study(
         if not missing:
             tell("nothing to run: every trial is in the store")
         warm_up(missing, _telling(tell))
-        results, aside = run_and_summarise(study, opened, processes, watch)
+        results, aside = run_plan(study, plan, opened, processes, watch)
         write_results(results, folder)
     return RunOutcome(replace(results, folder=folder), folder, aside, opened.damaged)
 
@@ -103,9 +103,8 @@ def check_study(path: str | Path, tell: Callable[[str], None] = lambda words: No
     find_own_files(study)
     if own_sensors(study):
         return outlook_text(Outlook(study, (), ()))
-    keyed = keyed_conditions(study)
-    warm_up(FixedCount(keyed, study.seed, 1, 1).next_tasks(lambda key, span: False), _telling(tell))
-    return outlook_text(look_ahead(study))
+    with telling_if_slow(_telling(tell)):
+        return outlook_text(look_ahead(study))
 
 
 def schema_text() -> str:
@@ -132,7 +131,7 @@ def tables(
 
     raises      ResultsError, StudyError: no results there; ChoiceError: no such metric, key or form
     """
-    results = find_results(path)
+    results, study = _results_and_study(Path(path))
     if form not in _FORMS:
         raise ChoiceError(f"no form of table is called {form!r}; choose one of {', '.join(_FORMS)}")
     try:
@@ -143,14 +142,9 @@ def tables(
     except ValueError as error:
         raise ChoiceError(str(error)) from error
     text = "\n\n".join(_FORMS[form](table, width) for table in chosen)
-    if form == "terminal" and _was_changed(path, results):
+    if form == "terminal" and study is not None and dict(study.document) != results.document:
         text += "\n\nThe study file has changed since: these are the results of before."
     return text
-
-
-def _was_changed(path: str | Path, results: Results) -> bool:
-    """Whether results were asked for by a study file that says something else by now."""
-    return Path(path).suffix == ".toml" and dict(load_study(path).document) != results.document
 
 
 def draw(
@@ -196,10 +190,15 @@ def find_results(path: str | Path) -> Results:
 
     raises      ResultsError, StudyError
     """
-    path = Path(path)
+    return _results_and_study(Path(path))[0]
+
+
+def _results_and_study(path: Path) -> tuple[Results, Study | None]:
+    """Results of a path, and the study as it is now where the path is that of its file."""
     if path.is_dir() or path.suffix != ".toml":
-        return load_results(path)
-    return load_results(results_folder(load_study(path)))
+        return load_results(path), None
+    study = load_study(path)
+    return load_results(results_folder(study)), study
 
 
 def _make_folder(folder: Path) -> None:

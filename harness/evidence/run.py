@@ -13,7 +13,7 @@ import pandas as pd
 
 from harness.evidence.best import best_in
 from harness.evidence.case_scores import CaseScores, join_spans
-from harness.evidence.plans import FixedCount, KeyedCondition, keyed_conditions
+from harness.evidence.plans import FixedCount, KeyedCondition
 from harness.evidence.results import Results
 from harness.evidence.summary import scan_rows, summary_row
 from harness.study.study import Study
@@ -24,16 +24,15 @@ from harness.trials.task import spans_of
 from harness.trials.workers import Workers
 
 
-def run_study(
-    study: Study, store: Store, workers: Workers, watch: Watcher
+def run_plan(
+    study: Study, plan: FixedCount, store: Store, workers: Workers, watch: Watcher
 ) -> tuple[Results, list[SetAside]]:
-    """Run what the store misses of a study, and summarise it.
+    """Run what the store misses of a study by its plan, and summarise it.
 
     returns     the results, and the tasks that failed three times and are missing from them
     """
     started = datetime.datetime.now(datetime.UTC)
-    conditions = keyed_conditions(study)
-    plan = FixedCount(conditions, study.seed, study.trials, workers.in_flight)
+    conditions = plan.conditions
     aside = drive(plan, store, workers, watch)
     summary, scans = _summarise(study, conditions, store)
     manifest = _manifest(study, conditions, workers, started, aside)

@@ -34,12 +34,12 @@ def claim_folder(folder: Path, study: str) -> None:
     try:
         if folder.exists() and not folder.is_dir():
             raise ResultsError(f"{folder}: is a file; name a folder with --into")
-        if folder.is_dir() and any(folder.iterdir()) and not _is_ours(folder):
+        other = _study_of(folder)
+        if other is None and folder.is_dir() and not _holds_nothing_else(folder):
             raise ResultsError(
                 f"{folder}: holds files but no {MANIFEST} of this tool, so nothing was written; "
                 "name another folder with --into"
             )
-        other = _study_of(folder)
         if other not in (None, study):
             raise ResultsError(
                 f"{folder}: holds the results of the study {other!r}; name another folder with "
@@ -107,10 +107,10 @@ def _read_manifest(folder: Path) -> dict[str, Any]:
     return dict(manifest)
 
 
-def _is_ours(folder: Path) -> bool:
-    """Whether a folder holds results, whole or damaged: nothing but what a run writes."""
+def _holds_nothing_else(folder: Path) -> bool:
+    """Whether a folder is empty, or holds nothing but what a run writes, be it damaged."""
     names = {entry.name for entry in folder.iterdir() if not entry.name.startswith(".")}
-    return _study_of(folder) is not None or names <= {MANIFEST, *_FILES, "figures"}
+    return names <= {MANIFEST, *_FILES, "figures"}
 
 
 def _study_of(folder: Path) -> str | None:

@@ -20,9 +20,9 @@ _warm: set[tuple[object, ...]] = set()  # combinations that this process has run
 def warm_up(tasks: Iterable[Task], tell: Callable[[], None] = lambda: None) -> None:
     """Run a first trial of two scans for every combination of models and strategies.
 
-    tell    called once if this takes longer than loading compiled code would
+    tell    see telling_if_slow
     """
-    with _after(_PATIENCE_S, tell):
+    with telling_if_slow(tell):
         for task in tasks:
             for case in task.cases:
                 combination = (
@@ -54,8 +54,9 @@ def _shortest(task: Task, case: TaskCase) -> Task:
 
 
 @contextmanager
-def _after(seconds: float, act: Callable[[], None]) -> Iterator[None]:
-    timer = threading.Timer(seconds, act)
+def telling_if_slow(tell: Callable[[], None]) -> Iterator[None]:
+    """Call `tell` once if the block takes longer than loading compiled code would."""
+    timer = threading.Timer(_PATIENCE_S, tell)
     timer.daemon = True
     timer.start()
     try:
