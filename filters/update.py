@@ -53,6 +53,17 @@ def difference(m: int, periods: Any, detection: Any, expected: Any, out: Any) ->
 
 
 @helper
+def _fill_row(
+    row: Any, log_weight: float, distance: float, parent: int, detection: int, covariance: int
+) -> None:
+    row.log_weight = log_weight
+    row.distance = distance
+    row.parent = parent
+    row.detection = detection
+    row.covariance = covariance
+
+
+@helper
 def explain_by_component(
     n: int,
     m: int,
@@ -82,11 +93,8 @@ def explain_by_component(
     )
     detected = models.detection.probability(models.detection.parameters, scan.site, mean)
 
-    table[rows].log_weight = log_weight + log_or_minus_infinity(1.0 - detected * gate.probability)
-    table[rows].distance = 0.0
-    table[rows].parent = component
-    table[rows].detection = NOT_DETECTED
-    table[rows].covariance = prior
+    log_missed = log_or_minus_infinity(1.0 - detected * gate.probability)
+    _fill_row(table[rows], log_weight + log_missed, 0.0, component, NOT_DETECTED, prior)
     for i in range(n):
         means[rows, i] = mean[i]
     rows += 1
@@ -104,12 +112,9 @@ def explain_by_component(
             continue
         clutter = models.clutter.intensity(models.clutter.parameters, scan.site, scan.detections[j])
         log_clutter = math.log(clutter) if clutter > 0.0 else 0.0  # see settle for none
-        table[rows].log_weight = log_weight + peak - 0.5 * distance - log_clutter
+        log_found = log_weight + peak - 0.5 * distance - log_clutter
+        _fill_row(table[rows], log_found, distance, component, j, prior + 1)
         table[rows].clutter = clutter
-        table[rows].distance = distance
-        table[rows].parent = component
-        table[rows].detection = j
-        table[rows].covariance = prior + 1
         for i in range(n):
             value = mean[i]
             for k in range(m):

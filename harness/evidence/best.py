@@ -12,7 +12,7 @@ from collections.abc import Callable, Mapping
 import numpy as np
 
 from harness.evidence.case_scores import CaseScores
-from metrics.intervals import mean_interval
+from metrics.intervals import mean_influence, mean_interval
 from metrics.paired import holm_adjust, loss_rate_difference, root_mean_ratio
 
 Cases = Mapping[str, CaseScores]
@@ -33,14 +33,10 @@ def best_in(cases: Cases) -> dict[str, list[str]]:
     fewest_lost = _not_told_apart(cases, _loss_rate, _loss_p_value)
     mark("track_loss_rate", fewest_lost)
     contenders = {name: cases[name] for name in fewest_lost}
-    mark(
-        "rmse_position",
-        _not_told_apart(contenders, _rmse("position_square"), _p("position_square")),
-    )
-    mark(
-        "rmse_velocity",
-        _not_told_apart(contenders, _rmse("velocity_square"), _p("velocity_square")),
-    )
+    for error in ("position", "velocity"):
+        column = f"{error}_square"
+        value, p_value = _mean_square(column), _mean_square_p_value(column)
+        mark(f"rmse_{error}", _not_told_apart(contenders, value, p_value))
     mark("anees", [name for name in contenders if _is_consistent(cases[name])])
     mark("gospa", _not_told_apart(cases, _gospa, _gospa_p_value))
     return found
@@ -75,17 +71,15 @@ def _loss_p_value(first: CaseScores, second: CaseScores) -> float:
     return loss_rate_difference(only_first, only_second, int(both.sum())).p_value
 
 
-def _rmse(column: str) -> Callable[[CaseScores], float]:
+def _mean_square(column: str) -> Callable[[CaseScores], float]:
     def value(case: CaseScores) -> float:
-        squares = getattr(case.scores, column)[case.held]
-        weights = case.scores.estimates[case.held]
-        total = weights.sum()
-        return float(np.nansum(squares * weights) / total) if total else np.nan
+        held = case.held
+        return mean_influence(getattr(case.scores, column)[held], case.scores.estimates[held])[0]
 
     return value
 
 
-def _p(column: str) -> Callable[[CaseScores, CaseScores], float]:
+def _mean_square_p_value(column: str) -> Callable[[CaseScores, CaseScores], float]:
     def p_value(first: CaseScores, second: CaseScores) -> float:
         both = first.held & second.held
         return root_mean_ratio(
@@ -100,8 +94,7 @@ def _p(column: str) -> Callable[[CaseScores, CaseScores], float]:
 
 
 def _gospa(case: CaseScores) -> float:
-    power = case.gospa_power[case.counted]
-    return float(power.mean()) if len(power) else np.nan
+    return mean_influence(case.gospa_power[case.counted])[0]
 
 
 def _gospa_p_value(first: CaseScores, second: CaseScores) -> float:

@@ -8,6 +8,7 @@ each at a place drawn from the Gaussian. So the work goes with the number of poi
 
 from __future__ import annotations
 
+import math
 from typing import Any
 
 from filters.compiled import helper
@@ -38,6 +39,34 @@ def is_inside(m: int, sensor: SensorModel, measurement: Any, offset: Any) -> boo
 def free_row(filled: int, detections: Any) -> int:
     """Row for the next detection; where the room ends, the last."""
     return min(filled, detections.shape[0] - 1)
+
+
+def room_for_about(expected: float) -> int:
+    """Rows for a Poisson number: one in a thousand million times it does not suffice."""
+    return int(expected + 6.0 * math.sqrt(expected) + 16.0)
+
+
+@helper
+def keep_if_inside(
+    m: int,
+    sensor: SensorModel,
+    share: float,
+    first: int,
+    filled: int,
+    detections: Any,
+    offset: Any,
+) -> int:
+    """Keep a scan's latest detection, at a random place, if it lies in the region.
+
+    share, first    see move_among; offset (m,) working memory
+    returns         how many detections there are now
+    """
+    latest = detections[free_row(filled, detections)]
+    wrap(m, sensor.periods, latest)
+    if not is_inside(m, sensor, latest, offset):
+        return filled
+    move_among(m, share, first, filled, detections)
+    return filled + 1
 
 
 @helper
@@ -107,10 +136,7 @@ def _draw_in_bump(
         share = uniform(numbers)
         for i in range(m):
             point[i] = bump[i] + bump[m + i] * normal(numbers)
-        wrap(m, sensor.periods, point)
-        if is_inside(m, sensor, point, offset):
-            move_among(m, share, first, filled, detections)
-            filled += 1
+        filled = keep_if_inside(m, sensor, share, first, filled, detections, offset)
         height += exponential(numbers)
     return filled
 

@@ -20,7 +20,14 @@ from filters.hypotheses import NOT_DETECTED
 from filters.models.contract import Models, SensorModel
 from filters.random_numbers import DETECTION, NOISE, Numbers, fill_normals, open_at, uniform
 from filters.track import Scans
-from harness.scene.clutter import draw_clutter, free_row, is_inside, move_among, wrap
+from harness.scene.clutter import (
+    draw_clutter,
+    free_row,
+    is_inside,
+    move_among,
+    room_for_about,
+    wrap,
+)
 from harness.scene.hidden import Hidden, hidden_truth
 from harness.scene.models import models_of
 from harness.scene.persistent_clutter import list_present, show_points
@@ -163,7 +170,7 @@ def draw_detections(
     offsets = np.empty((trials, scans + 1), np.int64)
     outside = np.empty((trials, scans), np.bool_)
     expected = trials * scans * (_most_clutter(models, hidden) + 1.0)
-    room_needed = int(expected + 6.0 * math.sqrt(expected) + 16.0)
+    room_needed = room_for_about(expected)
     while True:
         detections = np.empty((room_needed, m))
         filled = _detection_kernel(m)(

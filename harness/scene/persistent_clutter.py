@@ -8,7 +8,6 @@ or points that show more often, contain fewer.
 from __future__ import annotations
 
 import functools
-import math
 from collections.abc import Callable
 from typing import Any, NamedTuple
 
@@ -25,7 +24,7 @@ from filters.random_numbers import (
     open_at,
     uniform,
 )
-from harness.scene.clutter import free_row, is_inside, move_among, wrap
+from harness.scene.clutter import free_row, keep_if_inside, room_for_about
 from harness.study.schema import Scene
 
 _SCANS = 1 << 17  # more than a trial can have
@@ -107,7 +106,7 @@ def draw_persistent_points(
     times = scene.scan_times()
     newly_come = -np.expm1(-scene.scan_intervals() / stated.mean_lifetime_s)
     expected = stated.expected_number * np.where(np.arange(len(times)) == 0, 1.0, newly_come)
-    room = int(expected.sum() * trials + 6.0 * math.sqrt(expected.sum() * trials) + 16.0)
+    room = room_for_about(expected.sum() * trials)
     while True:
         places = np.empty((room, m))
         first_scans, end_scans, purposes = (np.empty(room, np.int64) for _ in range(3))
@@ -194,8 +193,5 @@ def show_points(
         detection = detections[free_row(filled, detections)]
         for i in range(m):
             detection[i] = points.places[point, i] + points.spread[i] * normal(numbers)
-        wrap(m, sensor.periods, detection)
-        if is_inside(m, sensor, detection, offset):
-            move_among(m, share, first, filled, detections)
-            filled += 1
+        filled = keep_if_inside(m, sensor, share, first, filled, detections, offset)
     return filled
