@@ -215,4 +215,4 @@ def _folder_of(results: Results) -> Path:
 
 
 def _telling(tell: Callable[[str], None]) -> Callable[[], None]:
-    return lambda: tell("getting kernels ready; compiling them, once, takes half a minute")
+    return lambda: tell("getting kernels ready; compiling them, once, takes about a minute")
