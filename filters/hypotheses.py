@@ -28,8 +28,12 @@ HYPOTHESIS = np.dtype(
         ("parent", np.int64),
         ("detection", np.int64),
         ("covariance", np.int64),
-        ("group", np.int64),  # for the reduction's own use
-        ("group_weight", np.float64),  # likewise
+        ("mode", np.int64),  # which of the motions the component moved by
+        # for the reduction's own use
+        ("group", np.int64),
+        ("partner", np.int64),
+        ("group_weight", np.float64),
+        ("cost", np.float64),
     ],
     align=True,
 )
@@ -41,13 +45,16 @@ class Hypotheses(NamedTuple):
     table: Any  # (capacity,) HYPOTHESIS
     means: Any  # (capacity, n)
     covariances: Any  # (at least the highest index in `covariance` + 1, n, n)
-    work: Any  # (n + 2, n) for the reduction's own use
+    histories: Any  # (capacity, depth) int64, for reductions that look at them
+    work: Any  # (slots, n + 2, n) for the reduction's own use
 
 
+_INTEGERS = types.Array(types.int64, 1, "C")
+_HISTORIES = types.Array(types.int64, 2, "C")
 _CUBE = types.Array(types.float64, 3, "C")
 _TABLE = types.Array(from_dtype(HYPOTHESIS), 1, "C")
-_HYPOTHESES = types.NamedTuple((_TABLE, MATRIX, _CUBE, MATRIX), Hypotheses)
-_MIXTURE = types.NamedTuple((VECTOR, MATRIX, _CUBE), Mixture)
+_HYPOTHESES = types.NamedTuple((_TABLE, MATRIX, _CUBE, _HISTORIES, _CUBE), Hypotheses)
+_MIXTURE = types.NamedTuple((VECTOR, MATRIX, _CUBE, _INTEGERS, _HISTORIES), Mixture)
 
 # A reduction: (hypotheses, rows, origin, settings, mixture) -> number of components written
 REDUCE = types.int64(_HYPOTHESES, types.int64, types.int64, VECTOR, _MIXTURE)

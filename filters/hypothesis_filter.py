@@ -17,9 +17,10 @@ from filters.compiled import helper, kernel
 from filters.gaussian import predict_covariance
 from filters.hypotheses import HYPOTHESIS, Hypotheses
 from filters.linearise import room_for_prediction
-from filters.mixture import Mixture, copy_gaussian, mixture_moments
+from filters.mixture import Mixture, copy_gaussian, mixture_moments, room_for_mixture
 from filters.models.contract import Models, MotionModel
 from filters.records import zeroed_records
+from filters.reductions.reduction import Reduction
 from filters.track import (
     Ending,
     Prior,
@@ -41,7 +42,6 @@ class HypothesisStrategy(NamedTuple):
 
     reduce: Callable[..., Any]  # a compiled reduction for this state size
     settings: np.ndarray  # of the reduction
-    capacity: int  # most components after the reduction
     gate: Gate
     ending: Ending
     estimate: int  # ESTIMATE_MEAN or ESTIMATE_HEAVIEST
@@ -56,16 +56,18 @@ class Room(NamedTuple):
     step: Any  # see _room_for_step
 
 
-def room_for(n: int, m: int, capacity: int, most_detections: int) -> Room:
-    """Working memory for mixtures of up to `capacity` components."""
+def room_for(n: int, m: int, reduction: Reduction, most_detections: int) -> Room:
+    """Working memory for the mixtures that a reduction leaves."""
+    capacity = reduction.capacity
     most_rows = capacity * (1 + most_detections)
     return Room(
-        Mixture(np.empty(capacity), np.empty((capacity, n)), np.empty((capacity, n, n))),
+        room_for_mixture(n, capacity, reduction.depth),
         Hypotheses(
             zeroed_records(most_rows, HYPOTHESIS),
             np.empty((most_rows, n)),
             np.empty((2 * capacity, n, n)),
-            np.empty((n + 2, n)),
+            np.empty((most_rows if reduction.depth else 0, reduction.depth), np.int64),
+            np.empty((reduction.slots, n + 2, n)),
         ),
         room_for_prediction(n, m),
         _room_for_step(n, m),

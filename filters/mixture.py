@@ -4,7 +4,11 @@ from __future__ import annotations
 
 from typing import Any, NamedTuple
 
+import numpy as np
+
 from filters.compiled import helper
+
+NO_SCAN = -2  # in a history: before the first scan
 
 
 class Mixture(NamedTuple):
@@ -13,6 +17,19 @@ class Mixture(NamedTuple):
     weights: Any  # (capacity,), summing to one
     means: Any  # (capacity, n)
     covariances: Any  # (capacity, n, n)
+    modes: Any  # (capacity,) int64, which of the motions each moves by
+    histories: Any  # (capacity, depth) int64, associations of the last scans, newest first
+
+
+def room_for_mixture(n: int, capacity: int, depth: int) -> Mixture:
+    """Room for components of n states, with the associations of the last `depth` scans."""
+    return Mixture(
+        np.empty(capacity),
+        np.empty((capacity, n)),
+        np.empty((capacity, n, n)),
+        np.zeros(capacity, np.int64),
+        np.full((capacity, depth), NO_SCAN, np.int64),
+    )
 
 
 @helper
@@ -67,7 +84,7 @@ def copy_gaussian(n: int, mean: Any, covariance: Any, to_mean: Any, to_covarianc
 @helper
 def mixture_moments(n: int, mixture: Mixture, count: int, mean: Any, covariance: Any) -> None:
     """Write mean (n,) and covariance (n, n) of the first `count` components together."""
-    weights, means, covariances = mixture
+    weights, means, covariances = mixture.weights, mixture.means, mixture.covariances
     clear_moments(n, mean, covariance)
     for i in range(count):
         add_to_mean(n, weights[i], means[i], mean)

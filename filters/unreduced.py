@@ -23,7 +23,7 @@ def components_unreduced(scans: Scans) -> np.ndarray:
 def bytes_a_component(n: int, most_detections: int) -> int:
     """Memory that `hypothesis_filter.room_for` takes for a component of n states."""
     hypotheses = (1 + most_detections) * (HYPOTHESIS.itemsize + 8 * n) + 2 * 8 * n * n
-    return hypotheses + 8 * (1 + n + n * n)
+    return hypotheses + 8 * (2 + n + n * n)
 
 
 def capacity_unreduced(scans: Scans, n: int, most_bytes: float = 2e9) -> int:

@@ -84,7 +84,7 @@ def explain_by_component(
     a detection leaves of it is written behind it. work (2, m).
     returns     rows in use now
     """
-    table, means, covariances, _ = hypotheses
+    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
     innovation, solved = work[0], work[1]
     prior = 2 * component
     log_weight = log_or_minus_infinity(weight)

@@ -1,8 +1,8 @@
 """Reductions that take one hypothesis as certain.
 
-nearest         the detection of least squared distance: the textbook nearest neighbour filter
-heaviest        the most probable hypothesis, 'not detected' among them
-true_origin     the one with the true origin: a reference, possible only in simulation
+NEAREST         the detection of least squared distance: the textbook nearest neighbour filter
+HEAVIEST        the most probable hypothesis, 'not detected' among them
+TRUE_ORIGIN     the one with the true origin: a reference, possible only in simulation
 """
 
 from __future__ import annotations
@@ -13,6 +13,7 @@ from typing import Any
 from filters.compiled import helper
 from filters.hypotheses import NOT_DETECTED, Hypotheses
 from filters.mixture import Mixture, copy_gaussian
+from filters.reductions.reduction import Reduction
 
 # One component goes in, so row 0 is its 'not detected' in every table below.
 
@@ -51,7 +52,7 @@ def _keep(n: int, h: int, hypotheses: Hypotheses, mixture: Mixture) -> int:
     return 1
 
 
-def nearest(n: int) -> Callable[..., int]:
+def _keep_nearest(n: int) -> Callable[..., int]:
     """Keep the detection of least squared distance; the prediction where there is none."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
@@ -60,7 +61,7 @@ def nearest(n: int) -> Callable[..., int]:
     return reduce
 
 
-def heaviest(n: int) -> Callable[..., int]:
+def _keep_heaviest(n: int) -> Callable[..., int]:
     """Keep the hypothesis of greatest weight."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
@@ -69,10 +70,15 @@ def heaviest(n: int) -> Callable[..., int]:
     return reduce
 
 
-def true_origin(n: int) -> Callable[..., int]:
+def _keep_true_origin(n: int) -> Callable[..., int]:
     """Keep the hypothesis of the detection that is the target's own, or 'not detected'."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
         return _keep(n, _of_origin(hypotheses.table, rows, origin), hypotheses, mixture)
 
     return reduce
+
+
+NEAREST = Reduction(_keep_nearest)
+HEAVIEST = Reduction(_keep_heaviest)
+TRUE_ORIGIN = Reduction(_keep_true_origin)

@@ -12,11 +12,12 @@ from typing import Any
 from filters.compiled import helper
 from filters.hypotheses import Hypotheses
 from filters.mixture import Mixture, add_to_covariance, add_to_mean, clear_moments, mirror
+from filters.reductions.reduction import Reduction
 
 
 @helper
 def _match(n: int, hypotheses: Hypotheses, rows: int, mixture: Mixture) -> int:
-    table, means, covariances, _ = hypotheses
+    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
     mean, covariance = mixture.means[0], mixture.covariances[0]
     clear_moments(n, mean, covariance)
     for h in range(rows):
@@ -29,10 +30,13 @@ def _match(n: int, hypotheses: Hypotheses, rows: int, mixture: Mixture) -> int:
     return 1
 
 
-def match_moments(n: int) -> Callable[..., int]:
+def _match_moments(n: int) -> Callable[..., int]:
     """One Gaussian with the mean and the covariance of all hypotheses together."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
         return _match(n, hypotheses, rows, mixture)
 
     return reduce
+
+
+MATCH_MOMENTS = Reduction(_match_moments)

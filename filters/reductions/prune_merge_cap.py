@@ -19,19 +19,10 @@ from filters.cholesky import factorise, squared_distance
 from filters.compiled import helper
 from filters.hypotheses import Hypotheses
 from filters.mixture import Mixture, add_to_covariance, add_to_mean, clear_moments, mirror
+from filters.reductions.reduction import Reduction
 
 _DROPPED = -2
 _FREE = -1
-
-
-def reduction_settings(prune_below: float, merge_below: float, max_components: int) -> np.ndarray:
-    """Pack the settings of this reduction.
-
-    prune_below     share of the total weight, [0, 1)
-    merge_below     squared distance, unitless; 0 merges nothing
-    max_components  at least 1
-    """
-    return np.array([prune_below, merge_below, max_components], float)
 
 
 @helper
@@ -88,7 +79,7 @@ def _write_group(
     n: int, head: int, hypotheses: Hypotheses, rows: int, mixture: Mixture, place: int
 ) -> None:
     """Write weight and matched moments of a group into one place of the mixture."""
-    table, means, covariances, _ = hypotheses
+    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
     mean, covariance = mixture.means[place], mixture.covariances[place]
     total = table[head].group_weight
     clear_moments(n, mean, covariance)
@@ -106,7 +97,8 @@ def _write_group(
 @helper
 def _merge(n: int, hypotheses: Hypotheses, rows: int, merge_below: float) -> None:
     """Form groups greedily from the heaviest free row."""
-    table, means, covariances, work = hypotheses
+    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
+    work = hypotheses.work[0]
     factor = work[2:]
     head = _heaviest_free(table, rows)
     while head >= 0:
@@ -134,7 +126,7 @@ def _keep_heaviest(n: int, hypotheses: Hypotheses, rows: int, most: int, mixture
     return count
 
 
-def prune_merge_cap(n: int) -> Callable[..., int]:
+def _prune_merge_cap(n: int) -> Callable[..., int]:
     """Prune, merge greedily from the heaviest, keep the heaviest."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
@@ -143,3 +135,14 @@ def prune_merge_cap(n: int) -> Callable[..., int]:
         return _keep_heaviest(n, hypotheses, rows, int(settings[2]), mixture)
 
     return reduce
+
+
+def prune_merge_cap(prune_below: float, merge_below: float, max_components: int) -> Reduction:
+    """Prune, merge greedily from the heaviest, keep the heaviest.
+
+    prune_below     share of the total weight, [0, 1)
+    merge_below     squared distance, unitless; 0 merges nothing
+    max_components  at least 1
+    """
+    settings = np.array([prune_below, merge_below, max_components], float)
+    return Reduction(_prune_merge_cap, max_components, settings)

@@ -2,15 +2,10 @@
 
 from __future__ import annotations
 
-import functools
-from collections.abc import Callable
-from typing import Annotated, Any, ClassVar, Literal
+from typing import Annotated, ClassVar, Literal
 
-import numpy as np
 from pydantic import Field
 
-from filters.compiled import compile_to_pointer
-from filters.hypotheses import REDUCE
 from filters.hypothesis_filter import (
     ESTIMATE_HEAVIEST,
     ESTIMATE_MEAN,
@@ -20,38 +15,25 @@ from filters.hypothesis_filter import (
 )
 from filters.models.record import Count, NonNegative
 from filters.random_numbers import Numbers
-from filters.reductions.keep_one import heaviest, nearest, true_origin
-from filters.reductions.match_moments import match_moments
-from filters.reductions.prune_merge_cap import prune_merge_cap, reduction_settings
+from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
+from filters.reductions.match_moments import MATCH_MOMENTS
+from filters.reductions.prune_merge_cap import prune_merge_cap
+from filters.reductions.reduction import Reduction
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
 from filters.update import Gate
-
-NO_SETTINGS = np.zeros(1)
-
-
-@functools.cache
-def compiled_reduction(reduction: Callable[[int], Callable[..., int]], n: int) -> Any:
-    """Return a reduction compiled for states of n numbers."""
-    return compile_to_pointer(REDUCE, reduction(n))
 
 
 class GaussianStrategy(Strategy):
     """A filter of Gaussian components; a kind names its reduction."""
 
-    reduction: ClassVar[Callable[[int], Callable[..., int]]]
+    def reduction(self) -> Reduction:
+        """How the hypotheses of a scan become few components again."""
+        raise NotImplementedError
 
     def gate(self, measurement_size: int) -> Gate:
         """Which detections a component considers."""
         raise NotImplementedError
-
-    def capacity(self) -> int:
-        """Most components that the reduction leaves."""
-        return 1
-
-    def reduction_settings(self) -> np.ndarray:
-        """Settings as the reduction takes them."""
-        return NO_SETTINGS
 
     def estimate_choice(self) -> int:
         """How a mixture becomes one estimate."""
@@ -63,16 +45,16 @@ class GaussianStrategy(Strategy):
         """Follow the target through a batch of trials."""
         n = len(assumptions.prior.mean)
         m = scans.detections.shape[1]
+        reduction = self.reduction()
         strategy = HypothesisStrategy(
-            compiled_reduction(type(self).reduction, n),
-            self.reduction_settings(),
-            self.capacity(),
+            reduction.compiled(n),
+            reduction.settings,
             self.gate(m),
             self.ends.rule(assumptions.axes),
             self.estimate_choice(),
         )
         tracks = room_for_tracks(scans, n)
-        room = room_for(n, m, strategy.capacity, scans.most_detections)
+        room = room_for(n, m, reduction, scans.most_detections)
         compiled_filter(n, m)(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
         return tracks
 
@@ -93,7 +75,10 @@ class NearestNeighbour(GatedStrategy):
 
     kind: Literal["nearest-neighbour"]
     """Which strategy: nearest neighbour."""
-    reduction: ClassVar = nearest
+
+    def reduction(self) -> Reduction:
+        """Keep the nearest."""
+        return NEAREST
 
 
 class MostProbableHypothesis(GatedStrategy):
@@ -101,7 +86,10 @@ class MostProbableHypothesis(GatedStrategy):
 
     kind: Literal["most-probable-hypothesis"]
     """Which strategy: most probable hypothesis."""
-    reduction: ClassVar = heaviest
+
+    def reduction(self) -> Reduction:
+        """Keep the heaviest."""
+        return HEAVIEST
 
 
 class ProbabilisticDataAssociation(GatedStrategy):
@@ -109,7 +97,10 @@ class ProbabilisticDataAssociation(GatedStrategy):
 
     kind: Literal["pda"]
     """Which strategy: probabilistic data association."""
-    reduction: ClassVar = match_moments
+
+    def reduction(self) -> Reduction:
+        """Match the moments of all."""
+        return MATCH_MOMENTS
 
 
 class GaussianMixture(GatedStrategy):
@@ -125,15 +116,10 @@ class GaussianMixture(GatedStrategy):
     """Components closer than this squared distance to a heavier one are merged with it."""
     estimate: Literal["mean", "heaviest"] = "mean"
     """What is reported: mean and matched covariance, or the heaviest component."""
-    reduction: ClassVar = prune_merge_cap
 
-    def capacity(self) -> int:
-        """Most components that the reduction leaves."""
-        return self.max_components
-
-    def reduction_settings(self) -> np.ndarray:
-        """Settings as the reduction takes them."""
-        return reduction_settings(self.prune_below, self.merge_below, self.max_components)
+    def reduction(self) -> Reduction:
+        """Prune, merge, cap."""
+        return prune_merge_cap(self.prune_below, self.merge_below, self.max_components)
 
     def estimate_choice(self) -> int:
         """How the mixture becomes one estimate."""
@@ -145,8 +131,11 @@ class KnownAssociation(GaussianStrategy):
 
     kind: Literal["known-association"]
     """Which strategy: known association, a reference."""
-    reduction: ClassVar = true_origin
     is_told_origins: ClassVar[bool] = True
+
+    def reduction(self) -> Reduction:
+        """Keep the one of the true origin."""
+        return TRUE_ORIGIN
 
     def gate(self, measurement_size: int) -> Gate:
         """No gate: the association is known."""
