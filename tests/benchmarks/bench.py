@@ -35,7 +35,6 @@ from filters.strategies import (
     ParticleFilter,
     ProbabilisticDataAssociation,
 )
-from filters.strategies.gaussian import compiled_reduction
 from filters.strategies.strategy import Strategy
 from filters.track import Tracks, room_for_tracks
 
@@ -100,16 +99,16 @@ def pda_kernel(batch: Drawn) -> Callable[[], Tracks]:
     """Our PDA alone, its room and tracks made beforehand, as those of the C kernel are."""
     models, prior, axes = batch.assumptions
     n, m = len(prior.mean), batch.scans.detections.shape[1]
+    reduction = PDA.reduction()
     strategy = HypothesisStrategy(
-        compiled_reduction(type(PDA).reduction, n),
-        PDA.reduction_settings(),
-        PDA.capacity(),
+        reduction.compiled(n),
+        reduction.settings,
         PDA.gate(m),
         PDA.ends.rule(axes),
         PDA.estimate_choice(),
     )
     tracks = room_for_tracks(batch.scans, n)
-    room = room_for(n, m, strategy.capacity, batch.scans.most_detections)
+    room = room_for(n, m, reduction, batch.scans.most_detections)
     kernel = compiled_filter(n, m)
 
     def run_kernel() -> Tracks:

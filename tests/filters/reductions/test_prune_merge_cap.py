@@ -16,7 +16,7 @@ from small_worlds import (
     run_on,
 )
 
-from filters.reductions.prune_merge_cap import reduction_settings
+from filters.reductions.prune_merge_cap import prune_merge_cap as reduction_with
 
 SETTINGS = [
     (1e-3, 0.5, 20),  # all three at work
@@ -56,8 +56,8 @@ def test_the_mixture_left_is_that_of_the_definition(detections, prune_below, mer
     """Order of the steps, order of the components, weights and moments, for one table each."""
     world = constant_velocity_world(1, clutter=0.3)
     scan = np.array(detections).reshape(-1, 1)
-    limits = reduction_settings(prune_below, merge_below, most)
-    found = look_inside(world, as_scans([[scan]], 1), settings=limits, capacity=40)
+    limits = reduction_with(prune_below, merge_below, most)
+    found = look_inside(world, as_scans([[scan]], 1), reduction=limits)
     rows = table_of(found)
     weights = np.sort([row.weight for row in rows])
     assume(np.all(np.diff(weights) > 1e-9 * weights[1:]))  # rounding would decide between equals
@@ -79,7 +79,7 @@ def test_a_run_of_scans_is_that_of_the_definition(axes, limits):
             predicted = predict(world.plain, mixture) if k else mixture
             mixture = reduce(hypotheses_of(world.plain, predicted, scan, 0.999))
         found = look_inside(
-            world, as_scans([scans], axes), 0.999, settings=reduction_settings(*limits)
+            world, as_scans([scans], axes), 0.999, reduction=reduction_with(*limits)
         )
         assert_same_mixture(found.mixture(len(mixture)), mixture)
 
@@ -124,8 +124,8 @@ def test_merging_keeps_mean_and_covariance():
     drawn = draw_scenes_of(world, np.random.default_rng(3), 20, 1, clutter_half_width=6.0)
     for scans in drawn.trials:
         for merge_below in (0.01, 1.0, 1e6):
-            limits = reduction_settings(0.0, merge_below, 500)
-            found = look_inside(world, as_scans([scans], 2), settings=limits)
+            limits = reduction_with(0.0, merge_below, 500)
+            found = look_inside(world, as_scans([scans], 2), reduction=limits)
             heads = np.unique(found.table["group"][found.table["weight"] > 0])
             mean, covariance = moments(found.mixture(len(heads)))
             before = moments(table_of(found))
@@ -139,12 +139,12 @@ def test_the_distance_of_merging_is_in_units_of_the_heavier_component():
     Moves of 'not detected' (variance 4) against a detection (variance 4/5) that lies 1.6 away:
     squared distances 1.6^2 / 4 = 0.64 and 1.6^2 / 0.8 = 3.2.
     """
-    limits = reduction_settings(0.0, 1.0, 10)
+    limits = reduction_with(0.0, 1.0, 10)
     for detection_probability, components in ((0.99, 2), (0.01, 1)):
         world = random_walk_world(
             prior_variance=4.0, detection_probability=detection_probability, clutter=0.1
         )
-        found = look_inside(world, as_scans([[[[2.0]]]], 1), settings=limits)
+        found = look_inside(world, as_scans([[[[2.0]]]], 1), reduction=limits)
         assert (found.table["weight"][1] > 0.5) == (components == 2)
         assert len(np.unique(found.table["group"])) == components
 
@@ -153,8 +153,8 @@ def test_pruning_never_leaves_nothing():
     """Twenty detections share the weight, all of them below the limit: the heaviest stays."""
     world = constant_velocity_world(1, clutter=1e-6)
     scan = np.linspace(0.5, 0.6, 20).reshape(-1, 1)
-    limits = reduction_settings(0.5, 0.0, 10)
-    found = look_inside(world, as_scans([[scan]], 1), settings=limits)
+    limits = reduction_with(0.5, 0.0, 10)
+    found = look_inside(world, as_scans([[scan]], 1), reduction=limits)
     assert found.room.mixture.weights[0] == 1.0
     np.testing.assert_array_equal(found.room.mixture.means[0], found.means[1])
 

@@ -21,7 +21,7 @@ from filters.models.motion import (
 )
 from filters.models.sensor import PositionSensor
 from filters.random_numbers import numbers_of
-from filters.reductions.prune_merge_cap import prune_merge_cap, reduction_settings
+from filters.reductions.prune_merge_cap import prune_merge_cap
 from filters.strategies import (
     GaussianMixture,
     KnownAssociation,
@@ -30,12 +30,12 @@ from filters.strategies import (
     ParticleFilter,
     ProbabilisticDataAssociation,
 )
-from filters.strategies.gaussian import compiled_reduction
 from filters.strategies.strategy import Assumptions, gate_of
 from filters.track import ORIGIN_UNKNOWN, Ending, Prior, Scans, room_for_tracks
 
 DENSITY_KEYS = ("clutter_density_per_m", "clutter_density_per_m2", "clutter_density_per_m3")
 NEVER = Ending(0, np.inf, 1)
+NO_REDUCTION = prune_merge_cap(0.0, 0.0, 500)
 
 
 class World(NamedTuple):
@@ -305,27 +305,22 @@ class LookInside(NamedTuple):
 
     def mixture(self, count):
         """The first components that the reduction left, as (weight, mean, covariance)."""
-        return list(zip(*(part[:count] for part in self.room.mixture), strict=True))
+        return list(zip(*(part[:count] for part in self.room.mixture[:3]), strict=True))
 
 
-def look_inside(
-    world, scans, gate_probability=1.0, reduction=prune_merge_cap, settings=None, capacity=500
-):
+def look_inside(world, scans, gate_probability=1.0, reduction=NO_REDUCTION):
     """Run the kernel on one trial, by default without reducing anything, and look inside."""
     prior = world.assumptions.prior
     n, m = len(prior.mean), scans.detections.shape[1]
-    if settings is None:
-        settings = reduction_settings(0.0, 0.0, capacity)
     strategy = HypothesisStrategy(
-        compiled_reduction(reduction, n),
-        settings,
-        capacity,
+        reduction.compiled(n),
+        reduction.settings,
         gate_of(gate_probability, m),
         NEVER,
         ESTIMATE_MEAN,
     )
     tracks = room_for_tracks(scans, n)
-    room = room_for(n, m, capacity, scans.most_detections)
+    room = room_for(n, m, reduction, scans.most_detections)
     compiled_filter(n, m)(world.assumptions.models, strategy, prior, scans, tracks, room)
     rows = min(tracks.hypotheses[0], len(room.hypotheses.table))
     table = room.hypotheses.table[:rows]
