@@ -17,7 +17,13 @@ from filters.compiled import helper, kernel
 from filters.gaussian import predict_covariance
 from filters.hypotheses import HYPOTHESIS, Hypotheses
 from filters.linearise import room_for_prediction
-from filters.mixture import Mixture, copy_gaussian, mixture_moments, room_for_mixture
+from filters.mixture import (
+    Mixture,
+    copy_gaussian,
+    forget_history,
+    mixture_moments,
+    room_for_mixture,
+)
 from filters.models.contract import Models, MotionModel
 from filters.records import zeroed_records
 from filters.reductions.reduction import Reduction
@@ -195,6 +201,7 @@ def _run_trial(
     mixture.weights[0] = 1.0
     mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
     copy_gaussian(n, mean, prior.covariance, mixture.means[0], mixture.covariances[0])
+    forget_history(mixture.histories[0])
     count = 1
     empty_scans = 0
     for k in range(scans.intervals.shape[0]):

@@ -33,6 +33,13 @@ def room_for_mixture(n: int, capacity: int, depth: int) -> Mixture:
 
 
 @helper
+def forget_history(history: Any) -> None:
+    """Start from no scan at all; history (depth,)."""
+    for scan in range(history.shape[0]):
+        history[scan] = NO_SCAN
+
+
+@helper
 def clear_moments(n: int, mean: Any, covariance: Any) -> None:
     """Start from nothing."""
     for row in range(n):

@@ -49,6 +49,7 @@ def _keep(n: int, h: int, hypotheses: Hypotheses, mixture: Mixture) -> int:
     spread = hypotheses.covariances[hypotheses.table[h].covariance]
     copy_gaussian(n, hypotheses.means[h], spread, mixture.means[0], mixture.covariances[0])
     mixture.weights[0] = 1.0
+    mixture.modes[0] = hypotheses.table[h].mode
     return 1
 
 

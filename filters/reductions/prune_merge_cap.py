@@ -1,7 +1,8 @@
 """Prune, merge greedily, cap: the reduction of a Gaussian mixture.
 
 Weights below a share of the total are dropped. Then, from the heaviest hypothesis i on, every j
-with (mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched.
+with (mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched, if
+it moved by the same of the motions.
 Then the heaviest groups are kept. Weights are rescaled after each step.
 
 Source: the clustering algorithm of Salmond (1990), SPIE 1305, Mixture reduction algorithms for
@@ -50,12 +51,12 @@ def _heaviest_free(table: Any, rows: int) -> int:
 def _gather(
     n: int, head: int, table: Any, rows: int, means: Any, factor: Any, limit: float, work: Any
 ) -> None:
-    """Put every free row near the head into its group."""
+    """Put every free row near the head, of the same mode, into its group."""
     difference, solved = work[0], work[1]
     table[head].group = head
     table[head].group_weight = table[head].weight
     for h in range(rows):
-        if table[h].group != _FREE:
+        if table[h].group != _FREE or table[h].mode != table[head].mode:
             continue
         for i in range(n):
             difference[i] = means[head, i] - means[h, i]
@@ -92,6 +93,7 @@ def _write_group(
             add_to_covariance(n, table[h].weight / total, means[h], spread, mean, covariance)
     mirror(n, covariance)
     mixture.weights[place] = total
+    mixture.modes[place] = table[head].mode
 
 
 @helper
