@@ -25,6 +25,7 @@ from filters.mixture import (
     room_for_mixture,
 )
 from filters.models.contract import Models, MotionModel
+from filters.posteriors import keep_mixture
 from filters.records import zeroed_records
 from filters.reductions.reduction import Reduction
 from filters.track import (
@@ -224,6 +225,7 @@ def _run_trial(
             clear_estimate(n, estimate, spread)
             return
         tracks.present[trial, k] = True
+        keep_mixture(n, mixture, count, trial, k, tracks.posteriors)
 
 
 @functools.cache

@@ -8,6 +8,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from filters.compiled import helper
+from filters.posteriors import NOT_ASKED, Posteriors
 
 ORIGIN_UNKNOWN = -2
 
@@ -60,9 +61,10 @@ class Tracks(NamedTuple):
     hypotheses: np.ndarray  # (trials,) formed before reduction, summed over scans
     scans_run: np.ndarray  # (trials,) scans until the track was ended
     impossible: np.ndarray  # (trials,) scans impossible under the model assumed
+    posteriors: Posteriors  # where they are asked for
 
 
-def room_for_tracks(scans: Scans, n: int) -> Tracks:
+def room_for_tracks(scans: Scans, n: int, posteriors: Posteriors = NOT_ASKED) -> Tracks:
     """Empty room for states of n numbers: no estimate anywhere, NaN where nothing is written."""
     trials, length = scans.origins.shape
     return Tracks(
@@ -73,12 +75,14 @@ def room_for_tracks(scans: Scans, n: int) -> Tracks:
         np.zeros(trials, np.int64),
         np.zeros(trials, np.int64),
         np.zeros(trials, np.int64),
+        posteriors,
     )
 
 
 def tracks_of(tracks: Tracks, rows: slice) -> Tracks:
-    """The tracks of some of the trials, without copying."""
-    return Tracks(*(column[rows] for column in tracks))
+    """The tracks of some of the trials, without copying and without their posteriors."""
+    columns = (column for column in tracks if isinstance(column, np.ndarray))
+    return Tracks(*(column[rows] for column in columns), posteriors=NOT_ASKED)
 
 
 @helper

@@ -14,6 +14,7 @@ from filters.hypothesis_filter import (
     room_for,
 )
 from filters.models.record import Count, NonNegative
+from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
 from filters.reductions.match_moments import MATCH_MOMENTS
@@ -39,8 +40,17 @@ class GaussianStrategy(Strategy):
         """How a mixture becomes one estimate."""
         return ESTIMATE_MEAN
 
+    def most_recorded(self, scans: Scans, reduction: Reduction) -> int:
+        """Most components that the posteriors of all trials and scans can have together."""
+        return reduction.capacity * scans.origins.size
+
     def run(
-        self, assumptions: Assumptions, scans: Scans, numbers: Numbers, first_trial: int
+        self,
+        assumptions: Assumptions,
+        scans: Scans,
+        numbers: Numbers,
+        first_trial: int,
+        record: bool = False,
     ) -> Tracks:
         """Follow the target through a batch of trials."""
         n = len(assumptions.prior.mean)
@@ -53,7 +63,12 @@ class GaussianStrategy(Strategy):
             self.ends.rule(assumptions.axes),
             self.estimate_choice(),
         )
-        tracks = room_for_tracks(scans, n)
+        posteriors = NOT_ASKED
+        if record:
+            trials, length = scans.origins.shape
+            most = self.most_recorded(scans, reduction)
+            posteriors = room_for_posteriors(trials, length, n, most)
+        tracks = room_for_tracks(scans, n, posteriors)
         room = room_for(n, m, reduction, scans.most_detections)
         compiled_filter(n, m)(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
         return tracks

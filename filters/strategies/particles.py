@@ -30,7 +30,12 @@ class ParticleFilter(Strategy):
     counts_hypotheses: ClassVar[bool] = False
 
     def run(
-        self, assumptions: Assumptions, scans: Scans, numbers: Numbers, first_trial: int
+        self,
+        assumptions: Assumptions,
+        scans: Scans,
+        numbers: Numbers,
+        first_trial: int,
+        record: bool = False,
     ) -> Tracks:
         """Follow the target through a batch of trials."""
         n = len(assumptions.prior.mean)

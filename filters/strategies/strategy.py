@@ -58,12 +58,18 @@ class Strategy(Record):
     counts_hypotheses: ClassVar[bool] = True
 
     def run(
-        self, assumptions: Assumptions, scans: Scans, numbers: Numbers, first_trial: int
+        self,
+        assumptions: Assumptions,
+        scans: Scans,
+        numbers: Numbers,
+        first_trial: int,
+        record: bool = False,
     ) -> Tracks:
         """Follow the target through a batch of trials.
 
         numbers         the study's random numbers, for strategies that draw some
         first_trial     number of the batch's first trial, which names its random streams
+        record          whether to keep the posteriors of every scan, for families that have them
         """
         raise NotImplementedError
 
