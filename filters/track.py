@@ -81,8 +81,10 @@ def room_for_tracks(scans: Scans, n: int, posteriors: Posteriors = NOT_ASKED) ->
 
 def tracks_of(tracks: Tracks, rows: slice) -> Tracks:
     """The tracks of some of the trials, without copying and without their posteriors."""
-    columns = (column for column in tracks if isinstance(column, np.ndarray))
-    return Tracks(*(column[rows] for column in columns), posteriors=NOT_ASKED)
+    columns = tracks._asdict()
+    del columns["posteriors"]
+    rows_of = {name: column[rows] for name, column in columns.items()}
+    return Tracks(**rows_of, posteriors=NOT_ASKED)
 
 
 @helper
