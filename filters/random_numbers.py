@@ -33,6 +33,7 @@ _TO_UNIT = 2.0**-53
 
 # Purposes. Numbers of one purpose are split further by adding a multiple of SPLIT.
 START, MOTION, DETECTION, NOISE, CLUTTER, STRATEGY, CLUTTER_LEVEL, PERSISTENT_CLUTTER = range(8)
+REGION_LEVEL, POSTERIOR_GAP = 8, 9  # of metrics
 SPLIT = 16
 
 
@@ -55,6 +56,12 @@ def numbers_of(seed: int, stream: int = 0) -> Numbers:
         np.zeros(4, np.uint64),
         np.full(1, 4, np.int64),
     )
+
+
+def generator_at(numbers: Numbers, trial: int, purpose: int) -> np.random.Generator:
+    """NumPy's generator with the very numbers of a trial and purpose, for metrics that sample."""
+    counter = np.array([0, purpose, trial, numbers.stream[0]], np.uint64)
+    return np.random.Generator(np.random.Philox(key=numbers.key, counter=counter))
 
 
 @helper

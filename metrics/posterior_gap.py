@@ -109,6 +109,53 @@ class Divergence(NamedTuple):
     standard_error: FloatArray  # (...) of the draws
 
 
+class ReferenceDraws(NamedTuple):
+    """Draws of a batch of reference mixtures, to be compared with many others."""
+
+    points: FloatArray  # (..., draws, n), NaN where there is no posterior
+    log_density: FloatArray  # (..., draws) of the reference there
+
+
+def reference_draws(
+    reference: GaussianMixtures, draws: int, rng: np.random.Generator
+) -> ReferenceDraws:
+    """Draw from each mixture, one after the other.
+
+    draws       at least 2 for each mixture
+    raises      ValueError: fewer draws
+    """
+    if draws < 2:
+        raise ValueError(f"draws must be at least 2, got {draws}")
+    exist = ~np.isnan(reference.exist)
+    points = np.full((*exist.shape, draws, reference.means.shape[-1]), np.nan)
+    densities = np.full((*exist.shape, draws), np.nan)
+    for place in map(tuple, np.argwhere(exist)):
+        points[place] = draw(reference.at(place), draws, rng)
+        densities[place] = log_density(reference.at(place), points[place])
+    return ReferenceDraws(points, densities)
+
+
+def divergence_at(drawn: ReferenceDraws, other: GaussianMixtures) -> Divergence:
+    """`kullback_leibler` of the mixtures that were drawn from and others, from those very draws.
+
+    raises      ValueError: shapes disagree
+    """
+    points, at_reference = drawn
+    if (*points.shape[:-2], points.shape[-1]) != (
+        *other.weights.shape[:-1],
+        other.means.shape[-1],
+    ):
+        raise ValueError(
+            f"mixtures must agree in all but the number of components, got draws {points.shape} "
+            f"and means {other.means.shape}"
+        )
+    ratios = at_reference - log_density(other, points)
+    return Divergence(
+        np.asarray(ratios.mean(axis=-1))[()],
+        np.asarray(ratios.std(axis=-1, ddof=1) / np.sqrt(ratios.shape[-1]))[()],
+    )
+
+
 def kullback_leibler(
     reference: GaussianMixtures, other: GaussianMixtures, draws: int, rng: np.random.Generator
 ) -> Divergence:
@@ -117,24 +164,11 @@ def kullback_leibler(
     If p is right, q's log score of the truth is worse by so many nats on average. Where q is much
     narrower than p, rare draws carry the mean, and the standard error is too small itself.
 
-    draws       at least 2 for each mixture, which draw one after the other
+    draws       at least 2 for each reference mixture, which draw one after the other
     raises      ValueError: shapes disagree, or fewer draws
     source      Hershey & Olsen, ICASSP 2007, Monte Carlo sampling (from memory)
     """
-    if draws < 2:
-        raise ValueError(f"draws must be at least 2, got {draws}")
-    _check_alike(reference, other)
-    exist = reference.exist * other.exist
-    estimate, standard_error = np.full(exist.shape, np.nan), np.full(exist.shape, np.nan)
-    for place in np.ndindex(exist.shape):
-        if np.isnan(exist[place]):
-            continue
-        p, q = reference.at(place), other.at(place)
-        points = draw(p, draws, rng)
-        ratios = log_density(p, points) - log_density(q, points)
-        estimate[place] = ratios.mean()
-        standard_error[place] = ratios.std(ddof=1) / np.sqrt(draws)
-    return Divergence(estimate[()], standard_error[()])
+    return divergence_at(reference_draws(reference, draws, rng), other)
 
 
 def grid_squared_error(

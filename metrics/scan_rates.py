@@ -26,16 +26,31 @@ def scan_rate(hits: ArrayLike, counted: ArrayLike, level: float = 0.95) -> tuple
     raises         ValueError: shapes disagree, or an array is not boolean
     source         Korn & Graubard, Survey Methodology 24 (1998) 193 (from memory)
     """
-    check_level(level)
     hits, counted = presence(hits), presence(counted)
     if hits.ndim != 2 or hits.shape != counted.shape:
         raise ValueError(
             "hits and counted must have one shape (trials, scans), "
             f"got {hits.shape} and {counted.shape}"
         )
-    scans = counted.sum(axis=1)
+    return rate_of_counts((hits & counted).sum(axis=1), counted.sum(axis=1), level)
+
+
+def rate_of_counts(
+    hits: ArrayLike, scans: ArrayLike, level: float = 0.95
+) -> tuple[float, Interval]:
+    """`scan_rate` from each trial's number of hits and of counted scans, both (trials,).
+
+    raises         ValueError: shapes disagree, or there are more hits than scans
+    """
+    check_level(level)
+    hits, scans = np.asarray(hits), np.asarray(scans)
+    if hits.ndim != 1 or hits.shape != scans.shape or np.any((hits < 0) | (hits > scans)):
+        raise ValueError(
+            "hits and scans must have one shape (trials,), hits from 0 to scans, "
+            f"got {hits.shape} and {scans.shape}"
+        )
     trials, total = int(np.count_nonzero(scans)), int(scans.sum())
-    shares = (hits & counted).sum(axis=1) / np.maximum(scans, 1)
+    shares = hits / np.maximum(scans, 1)
     rate, influence = mean_influence(shares, scans)
     if trials < 2:
         return rate, Interval(np.float64(np.nan), np.float64(np.nan))

@@ -8,12 +8,14 @@ from filters.strategies.gaussian import (
     ProbabilisticDataAssociation,
 )
 from filters.strategies.particles import ParticleFilter
+from filters.strategies.unreduced import UnreducedMixture
 
 STRATEGIES = (
     NearestNeighbour,
     MostProbableHypothesis,
     ProbabilisticDataAssociation,
     GaussianMixture,
+    UnreducedMixture,
     ParticleFilter,
     KnownAssociation,
 )

@@ -28,6 +28,8 @@ from filters.update import Gate
 class GaussianStrategy(Strategy):
     """A filter of Gaussian components; a kind names its reduction."""
 
+    has_posteriors: ClassVar[bool] = True
+
     def reduction(self) -> Reduction:
         """How the hypotheses of a scan become few components again."""
         raise NotImplementedError
@@ -39,6 +41,10 @@ class GaussianStrategy(Strategy):
     def estimate_choice(self) -> int:
         """How a mixture becomes one estimate."""
         return ESTIMATE_MEAN
+
+    def reduction_for(self, scans: Scans, n: int, first_trial: int) -> Reduction:
+        """The reduction for a batch of trials, where its room depends on them."""
+        return self.reduction()
 
     def most_recorded(self, scans: Scans, reduction: Reduction) -> int:
         """Most components that the posteriors of all trials and scans can have together."""
@@ -55,7 +61,7 @@ class GaussianStrategy(Strategy):
         """Follow the target through a batch of trials."""
         n = len(assumptions.prior.mean)
         m = scans.detections.shape[1]
-        reduction = self.reduction()
+        reduction = self.reduction_for(scans, n, first_trial)
         strategy = HypothesisStrategy(
             reduction.compiled(n),
             reduction.settings,

@@ -56,6 +56,8 @@ class Strategy(Record):
     is_told_origins: ClassVar[bool] = False
     # Whether the number of hypotheses formed is a measure of its cost.
     counts_hypotheses: ClassVar[bool] = True
+    # Whether it can keep the posteriors of every scan.
+    has_posteriors: ClassVar[bool] = False
 
     def run(
         self,

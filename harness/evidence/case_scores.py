@@ -3,10 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, fields
+from dataclasses import dataclass
 
 import numpy as np
 
+from harness.trials.posterior_scores import (
+    POSTERIOR_SCAN_COLUMNS,
+    POSTERIOR_TABLE_COLUMNS,
+    POSTERIOR_TRIAL_COLUMNS,
+    PosteriorScores,
+)
 from harness.trials.score import SCAN_COLUMNS, TRIAL_COLUMNS, SpanScores
 from harness.trials.task import SpanResult
 
@@ -66,9 +72,23 @@ def join_spans(
     parts = [span.scores for span in spans]
     joined = {name: np.concatenate([getattr(p, name) for p in parts]) for name in TRIAL_COLUMNS}
     summed = {name: add_in_tree([getattr(p, name) for p in parts]) for name in SCAN_COLUMNS}
-    scores = SpanScores(**joined, **summed)
-    for field in fields(scores):
-        getattr(scores, field.name).flags.writeable = False
+    scores = SpanScores(**joined, **summed, posterior=_join_posteriors(parts))
+    for name in (*TRIAL_COLUMNS, *SCAN_COLUMNS):
+        getattr(scores, name).flags.writeable = False
     return CaseScores(
         scores, float(np.median([span.us_per_scan for span in spans])), axes, window, order
+    )
+
+
+def _join_posteriors(parts: Sequence[SpanScores]) -> PosteriorScores | None:
+    scores = [part.posterior for part in parts if part.posterior is not None]
+    if not scores:
+        return None
+    columns = (*POSTERIOR_TRIAL_COLUMNS, *POSTERIOR_TABLE_COLUMNS)
+    return PosteriorScores(
+        **{name: np.concatenate([getattr(one, name) for one in scores]) for name in columns},
+        **{
+            name: add_in_tree([getattr(one, name) for one in scores])
+            for name in POSTERIOR_SCAN_COLUMNS
+        },
     )

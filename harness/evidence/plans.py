@@ -6,7 +6,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-from harness.study.expand import Condition
+from harness.study.expand import Case, Condition
 from harness.study.study import Study
 from harness.trials.driver import Settled
 from harness.trials.keys import case_key, rules_key, scene_key
@@ -25,6 +25,7 @@ class KeyedCondition:
     condition: Condition
     rules: ScoringRules
     cases: tuple[TaskCase, ...]
+    gap_reference: TaskCase | None = None
 
     @property
     def label(self) -> str:
@@ -38,14 +39,32 @@ def keyed_conditions(study: Study) -> list[KeyedCondition]:
     keyed = []
     for condition in study.conditions:
         rules = condition.rules
-        scoring = ScoringRules(rules.track_loss, rules.gospa, rules.first_scored_scan())
-        scenes, scored = scene_key(rules.scene, study.seed), rules_key(scoring)
+        scoring = ScoringRules(
+            rules.track_loss,
+            rules.gospa,
+            rules.first_scored_scan(),
+            rules.calibration,
+            rules.posterior_gap,
+        )
+        scenes = scene_key(rules.scene, study.seed)
+        reference = _gap_reference(condition)
+        alone = None if reference is None else case_key(scenes, reference, "")
+        scored = rules_key(scoring, alone)
         cases = tuple(
             TaskCase(case_key(scenes, case, scored), case.strategy, case.assumed)
             for case in condition.cases
         )
-        keyed.append(KeyedCondition(condition, scoring, cases))
+        places = {case.name: place for place, case in enumerate(condition.cases)}
+        compared = None if reference is None else cases[places[reference.name]]
+        keyed.append(KeyedCondition(condition, scoring, cases, compared))
     return keyed
+
+
+def _gap_reference(condition: Condition) -> Case | None:
+    gap = condition.rules.posterior_gap
+    if gap is None:
+        return None
+    return next(case for case in condition.cases if case.name == gap.reference)
 
 
 @dataclass(frozen=True)
@@ -85,6 +104,7 @@ class FixedCount:
                 tuple(spans[start : start + length]),
                 self.seed,
                 condition.label,
+                condition.gap_reference,
             )
             for condition, cases, spans in missing
             for start in range(0, len(spans), length)

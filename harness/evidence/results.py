@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -29,6 +29,7 @@ class Results:
     document: dict[str, Any]
     manifest: dict[str, Any]
     folder: Path | None = None
+    calibration: pd.DataFrame = field(default_factory=pd.DataFrame)
 
     @property
     def title(self) -> str:

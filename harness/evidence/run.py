@@ -15,7 +15,13 @@ from harness.evidence.best import best_in
 from harness.evidence.case_scores import CaseScores, join_spans
 from harness.evidence.plans import FixedCount, KeyedCondition
 from harness.evidence.results import Results
-from harness.evidence.summary import scan_rows, summary_row
+from harness.evidence.summary import (
+    calibration_rows,
+    posterior_row,
+    posterior_scan_rows,
+    scan_rows,
+    summary_row,
+)
 from harness.study.study import Study
 from harness.trials.driver import SetAside, Watcher, drive
 from harness.trials.keys import platform_words
@@ -34,16 +40,18 @@ def run_plan(
     started = datetime.datetime.now(datetime.UTC)
     conditions = plan.conditions
     aside = drive(plan, store, workers, watch)
-    summary, scans = _summarise(study, conditions, store)
+    summary, scans, calibration = _summarise(study, conditions, store)
     manifest = _manifest(study, conditions, workers, started, aside)
-    return Results(summary, scans, dict(study.document), manifest), aside
+    results = Results(summary, scans, dict(study.document), manifest, calibration=calibration)
+    return results, aside
 
 
 def _summarise(
     study: Study, conditions: Sequence[KeyedCondition], store: Store
-) -> tuple[pd.DataFrame, pd.DataFrame]:
+) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
     summary: list[dict[str, Any]] = []
     scans: list[pd.DataFrame] = []
+    calibration: list[pd.DataFrame] = []
     for keyed in conditions:
         condition = keyed.condition
         scored = _scored_cases(keyed, study.trials, store)
@@ -67,10 +75,22 @@ def _summarise(
                 "trials_chosen_by": "fixed",
                 "best_in": " ".join(best.get(case.name, [])),
             }
-            summary.append({**settings, **row, **chosen})
+            posterior = posterior_row(scored[case.name], keyed.rules)
+            summary.append({**settings, **row, **chosen, **posterior})
             times = condition.rules.scene.scan_times()
-            scans.append(_with_settings(settings, scan_rows(scored[case.name], times)))
-    return pd.DataFrame(summary), pd.concat(scans, ignore_index=True) if scans else pd.DataFrame()
+            by_scan = {
+                **scan_rows(scored[case.name], times),
+                **posterior_scan_rows(scored[case.name], keyed.rules),
+            }
+            scans.append(_with_settings(settings, by_scan))
+            if keyed.rules.calibration is not None:
+                levels = calibration_rows(scored[case.name])
+                calibration.append(_with_settings(settings, levels))
+    return pd.DataFrame(summary), _together(scans), _together(calibration)
+
+
+def _together(frames: list[pd.DataFrame]) -> pd.DataFrame:
+    return pd.concat(frames, ignore_index=True) if frames else pd.DataFrame()
 
 
 def _scored_cases(keyed: KeyedCondition, trials: int, store: Store) -> dict[str, CaseScores]:
@@ -89,7 +109,7 @@ def _scored_cases(keyed: KeyedCondition, trials: int, store: Store) -> dict[str,
 
 
 def _with_settings(settings: Mapping[str, Any], rows: Mapping[str, np.ndarray]) -> pd.DataFrame:
-    length = len(rows["scan"])
+    length = len(next(iter(rows.values())))
     return pd.DataFrame({**{key: [value] * length for key, value in settings.items()}, **rows})
 
 

@@ -2,21 +2,25 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
 
 from harness.evidence.case_scores import CaseScores
+from harness.trials.posterior_scores import BINS
+from harness.trials.score import ScoringRules
 from metrics.consistency import chi_square_mean_bounds, nees_inside
 from metrics.gospa import mean_gospa
 from metrics.intervals import (
+    Interval,
     effective_sample_size,
     mean_influence,
     mean_interval,
     root_mean_interval,
     wilson_interval,
 )
+from metrics.scan_rates import rate_of_counts
 
 Row = dict[str, Any]
 
@@ -54,6 +58,78 @@ def summary_row(case: CaseScores, measurement_size: int, counts_hypotheses: bool
         "impossible_scans": int(scores.impossible[counted].sum()),
     }
     return row
+
+
+def posterior_row(case: CaseScores, rules: ScoringRules) -> Row:
+    """Metrics of a case's whole posteriors, where they are asked for; the last columns.
+
+    Over the scoring window of held trials, but for `posterior_gap_ise`, which is at most 1 and so
+    is over every trial that did not fail. Intervals are over trials; that of
+    `posterior_gap_kl` holds the error of its draws too, as each trial has its own.
+    """
+    scores = case.scores.posterior
+    row: Row = {}
+    if scores is None:
+        return row
+    held, counted = case.held, case.counted
+    if rules.calibration is not None:
+        scans = scores.posteriors[held]
+        row |= _mean_with_interval("log_score", scores.log_score[held], scans)
+        row |= _mean_with_interval("region_level", scores.region_level[held], scans)
+        row |= _mean_with_interval("central_level", scores.central_level[held], scans)
+        for level, inside in zip(rules.calibration.levels, scores.inside.T, strict=True):
+            name = f"coverage_{100 * level:.10g}"
+            row |= _with_interval(name, *rate_of_counts(inside[held], scans))
+    if rules.posterior_gap is not None:
+        gaps = scores.gaps
+        row |= _mean_with_interval("posterior_gap_ise", scores.gap_ise[counted], gaps[counted])
+        row |= _mean_with_interval("posterior_gap_kl", scores.gap_kl[held], gaps[held])
+    return row
+
+
+def calibration_rows(case: CaseScores) -> Mapping[str, np.ndarray]:
+    """Histogram of transforms and coverage of regions; columns as `Results.calibration`."""
+    scores, held = case.scores.posterior, case.held
+    assert scores is not None
+    transforms, regions = scores.transform_bins[held], scores.region_bins[held]
+    within = np.cumsum(regions, axis=1)
+    shares = [rate_of_counts(column, transforms.sum(axis=1)) for column in transforms.T]
+    covered = [rate_of_counts(column, regions.sum(axis=1)) for column in within.T]
+    return {
+        "level": np.arange(1, BINS + 1) / BINS,
+        **_columns("transform_share", shares),
+        **_columns("coverage", covered),
+    }
+
+
+def _columns(name: str, rates: Sequence[tuple[float, Interval]]) -> Mapping[str, np.ndarray]:
+    return {
+        name: np.array([rate for rate, _ in rates]),
+        f"{name}_low": np.array([float(interval.low) for _, interval in rates]),
+        f"{name}_high": np.array([float(interval.high) for _, interval in rates]),
+    }
+
+
+def _mean_with_interval(name: str, values: np.ndarray, weights: np.ndarray) -> Row:
+    return _with_interval(name, _mean_of(values, weights), mean_interval(values, weights=weights))
+
+
+def _mean_of(values: np.ndarray, weights: np.ndarray) -> float:
+    return mean_influence(values, weights)[0]
+
+
+def posterior_scan_rows(case: CaseScores, rules: ScoringRules) -> Mapping[str, np.ndarray]:
+    """Metrics of whole posteriors scan by scan, where they are asked for."""
+    scores = case.scores.posterior
+    rows: dict[str, np.ndarray] = {}
+    if scores is None:
+        return rows
+    if rules.calibration is not None:
+        rows["log_score"] = _per_count(scores.scan_log_score, scores.scan_posteriors)
+    if rules.posterior_gap is not None:
+        rows["posterior_gap_ise"] = _per_count(scores.scan_gap_ise, scores.scan_gaps)
+        rows["posterior_gap_kl"] = _per_count(scores.scan_gap_kl, scores.scan_gaps_held)
+    return rows
 
 
 def scan_rows(case: CaseScores, times: np.ndarray) -> Mapping[str, np.ndarray]:

@@ -17,6 +17,7 @@ from harness.trials.files import write_text_whole, write_whole
 MANIFEST = "manifest.json"
 _SUMMARY = "summary.csv"
 _SCANS = "scans.parquet"
+_CALIBRATION = "calibration.parquet"  # where the study asks for it
 _FILES = {_SUMMARY, _SCANS}
 _FORMAT = "trackassay results 1"
 
@@ -63,7 +64,16 @@ def write_results(results: Results, folder: Path) -> None:
     """
     write_text_whole(folder / _SUMMARY, results.summary.to_csv(index=False))
     write_whole(folder / _SCANS, lambda beside: results.scans.to_parquet(beside, index=False))
-    files = {name: _digest(folder / name) for name in (_SUMMARY, _SCANS)}
+    names = [_SUMMARY, _SCANS]
+    calibration = results.calibration
+    if calibration.empty:
+        (folder / _CALIBRATION).unlink(missing_ok=True)
+    else:
+        names.append(_CALIBRATION)
+        write_whole(
+            folder / _CALIBRATION, lambda beside: calibration.to_parquet(beside, index=False)
+        )
+    files = {name: _digest(folder / name) for name in names}
     manifest = {**results.manifest, "files": files}
     write_text_whole(folder / MANIFEST, json.dumps(manifest, indent=1, default=str) + "\n")
 
@@ -85,7 +95,9 @@ def load_results(folder: Path) -> Results:
     summary = pd.read_csv(folder / _SUMMARY, keep_default_na=True, dtype={"best_in": str})
     summary["best_in"] = summary["best_in"].fillna("")
     scans = pd.read_parquet(folder / _SCANS)
-    return Results(summary, scans, manifest["study"], manifest, folder)
+    has_calibration = _CALIBRATION in manifest["files"]
+    calibration = pd.read_parquet(folder / _CALIBRATION) if has_calibration else pd.DataFrame()
+    return Results(summary, scans, manifest["study"], manifest, folder, calibration)
 
 
 def _read_manifest(folder: Path) -> dict[str, Any]:
@@ -98,7 +110,7 @@ def _read_manifest(folder: Path) -> dict[str, Any]:
         manifest = json.loads(path.read_text(encoding="utf-8"))
         if manifest["format"] != _FORMAT:
             raise ResultsError(f"{path}: its format is {manifest['format']!r}, not {_FORMAT!r}")
-        if not manifest["study"]["strategies"].keys() or manifest["files"].keys() != _FILES:
+        if not manifest["study"]["strategies"].keys() or not (manifest["files"].keys()) >= _FILES:
             raise KeyError("study, files")
     except (ValueError, KeyError, TypeError, AttributeError) as error:
         raise ResultsError(
@@ -110,7 +122,7 @@ def _read_manifest(folder: Path) -> dict[str, Any]:
 def _holds_nothing_else(folder: Path) -> bool:
     """Whether a folder is empty, or holds nothing but what a run writes, be it damaged."""
     names = {entry.name for entry in folder.iterdir() if not entry.name.startswith(".")}
-    return names <= {MANIFEST, *_FILES, "figures"}
+    return names <= {MANIFEST, *_FILES, _CALIBRATION, "figures"}
 
 
 def _study_of(folder: Path) -> str | None:

@@ -60,6 +60,11 @@ METRICS = {
     "outside": Quantity("scans with the target outside", "%", 100.0, rate=True),
     "impossible_scans": Quantity("impossible scans"),
     "lost": Quantity("lost trials", whole=True),
+    "log_score": Quantity("log score", "nats", held=True),
+    "region_level": Quantity("mean region level", held=True, expected=0.5),
+    "central_level": Quantity("mean central level", held=True, expected=0.5),
+    "posterior_gap_ise": Quantity("posterior gap, squared error", "%", 100.0),
+    "posterior_gap_kl": Quantity("posterior gap, divergence", "nats", held=True),
     "failed": Quantity("failed trials", whole=True),
     "trials": Quantity("trials", whole=True),
 }
@@ -87,6 +92,10 @@ def metric_quantity(results: Results, metric: str) -> Quantity:
             f"the results hold no metric {metric!r}; {nearest_names(metric, names, 'metrics')}"
         )
     quantity = METRICS.get(metric) or Quantity(metric.replace("_", " "))
+    if metric.startswith("coverage_"):
+        level = metric.removeprefix("coverage_")
+        expected = float(level) / 100.0
+        return Quantity(f"coverage of {level} % regions", "%", 100.0, held=True, expected=expected)
     if metric.startswith("gospa_"):
         order = float(results.document.get("gospa", {}).get("order", 2))
         return replace(quantity, unit="m" if order == 1 else f"m{order:g}")

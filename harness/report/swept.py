@@ -118,7 +118,7 @@ def narrowed(results: Results, setting: Setting) -> Results:
 
     raises  ValueError: a key is not swept, or the sweep has no such value
     """
-    summary, scans = results.summary, results.scans
+    summary, scans, calibration = results.summary, results.scans, results.calibration
     keys = swept_keys(results)
     for name, level in setting.items():
         swept = keys.get(resolve(results, name))
@@ -127,9 +127,11 @@ def narrowed(results: Results, setting: Setting) -> Results:
             raise ValueError(f"the results have no condition with {name} = {level!r}{known}")
         summary = summary[_at(summary[swept.key], swept, level)]
         scans = scans[_at(scans[swept.key], swept, level)]
+        if not calibration.empty:
+            calibration = calibration[_at(calibration[swept.key], swept, level)]
     if summary.empty:
         raise ValueError(f"the results have no condition with all of {dict(setting)}")
-    return replace(results, summary=summary, scans=scans)
+    return replace(results, summary=summary, scans=scans, calibration=calibration)
 
 
 def described(keys: Mapping[str, SweptKey], setting: Setting) -> str:

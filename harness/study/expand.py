@@ -119,11 +119,16 @@ def _tables(
     scoring = {
         name: versions((name,), table.record.model_validate)
         for name, table in _RULES.fields.items()
-        if name != "scene" and isinstance(table, Table)
+        if name != "scene" and isinstance(table, Table) and _is_said(name, document)
     }
     if findings:
         raise Findings(findings)
     return scene, strategies, scoring
+
+
+def _is_said(name: str, document: Mapping[str, Any]) -> bool:
+    """Whether a table stands in the study, or would be there all the same."""
+    return name in document or Rules.model_fields[name].get_default() is not None
 
 
 def _assumed_scenes(

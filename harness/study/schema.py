@@ -18,6 +18,7 @@ from filters.models.sensor.sensor import Sensor
 from filters.strategies import STRATEGIES
 from filters.strategies.strategy import Strategy
 from harness.study.legs import AnyLeg, check_legs
+from harness.study.names import nearest
 from harness.study.unmodelled import Unmodelled
 
 OWN = "FILE.py:NAME"  # stands for all sensors of a user's own among the kinds
@@ -199,6 +200,34 @@ class Scoring(Record):
     """First scan of the scoring window, from 1; by default the one after the first tenth."""
 
 
+Level = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0.0, lt=1.0)]
+Samples = Annotated[int, Field(strict=True, ge=2, le=1_000_000)]
+
+
+class Calibration(Record):
+    """Whether whole posteriors mean what they say; the table's presence asks for it."""
+
+    levels: Annotated[tuple[Level, ...], Field(min_length=1, max_length=20)] = (0.5, 0.9, 0.95)
+    """Levels of highest-density regions of position and velocity whose coverage is counted."""
+    samples: Samples = 200
+    """Draws of each posterior of several components, to find the region that the truth lies on."""
+
+    @model_validator(mode="after")
+    def _levels_differ(self) -> Self:
+        if len(set(self.levels)) < len(self.levels):
+            raise BadValue("levels", "names a level twice", "give each level once")
+        return self
+
+
+class PosteriorGap(Record):
+    """How far posteriors are from a reference's; the table's presence asks for it."""
+
+    reference: StrategyName
+    """Name of the strategy whose posterior the others are compared with, best an exact one."""
+    samples: Samples = 200
+    """Draws of each posterior of the reference, for the Kullback-Leibler divergence."""
+
+
 class Range(Record):
     """Swept values from one end to the other."""
 
@@ -253,6 +282,10 @@ class Rules(Record):
     """Settings of the GOSPA metric."""
     scoring: Scoring = Scoring()
     """Which scans count towards the metrics."""
+    calibration: Calibration | None = None
+    """Asks whether whole posteriors mean what they say: coverage, transforms, log score."""
+    posterior_gap: PosteriorGap | None = None
+    """Asks how far posteriors are from a reference strategy's."""
 
     def first_scored_scan(self) -> int:
         """Index of the first scan that counts, from 0."""
@@ -267,6 +300,34 @@ class Rules(Record):
                 "scoring.from_scan",
                 f"must not exceed the {self.scene.scan_count} scans of the scene",
                 "give an earlier scan or more scans",
+            )
+        return self
+
+    @model_validator(mode="after")
+    def _the_gap_has_a_reference(self) -> Self:
+        if self.posterior_gap is None:
+            return self
+        name, key = self.posterior_gap.reference, "posterior_gap.reference"
+        strategy = self.strategies.get(name)
+        if strategy is None:
+            alike = nearest(name, self.strategies)
+            meant = f"did you mean {alike}? " if alike else ""
+            raise BadValue(
+                key,
+                f"names {name!r}, which is no strategy of the study",
+                f"{meant}there are {', '.join(self.strategies)}",
+            )
+        if type(strategy).is_told_origins:
+            raise BadValue(
+                key,
+                f"names {name!r}, which is told the origins: its posterior is not the scans'",
+                "name a strategy that sees what the others see, best an unreduced-mixture",
+            )
+        if not type(strategy).has_posteriors:
+            raise BadValue(
+                key,
+                f"names {name!r}, which has an estimate but no posterior",
+                "name a strategy of Gaussian components or particles, best an unreduced-mixture",
             )
         return self
 

@@ -30,7 +30,12 @@ _SCENE_SOURCES = (
     "harness/trials/task.py",
 )
 _STRATEGY_SOURCES = ("filters",)
-_METRIC_SOURCES = ("metrics", "harness/trials/score.py")
+_METRIC_SOURCES = (
+    "metrics",
+    "harness/trials/score.py",
+    "harness/trials/posterior_scores.py",
+    "harness/trials/posterior_values.py",
+)
 
 _DIGITS = 12
 
@@ -81,14 +86,25 @@ def scene_key(scene: Scene, seed: int) -> str:
     )
 
 
-def rules_key(rules: ScoringRules) -> str:
-    """Key of how trials are scored."""
+def rules_key(rules: ScoringRules, gap_reference: str | None = None) -> str:
+    """Key of how trials are scored.
+
+    gap_reference   key of the strategy that posteriors are compared with, where they are
+    """
+    asked = []
+    if rules.need_posteriors:
+        calibration, gap = rules.calibration, rules.posterior_gap
+        asked = [
+            None if calibration is None else calibration.model_dump(),
+            None if gap is None else [gap.samples, gap_reference],
+        ]
     return digest(
         [
             rules.track_loss.model_dump(),
             rules.gospa.model_dump(),
             rules.first_scan,
             source_digest(*_METRIC_SOURCES),
+            *asked,
         ]
     )
 

@@ -8,7 +8,9 @@ import numpy as np
 
 from filters.track import Tracks
 from harness.scene.batch import Truth
-from harness.study.schema import Gospa, TrackLoss
+from harness.study.schema import Calibration, Gospa, PosteriorGap, TrackLoss
+from harness.trials.posterior_scores import PosteriorScores, posterior_scores
+from harness.trials.posterior_values import PosteriorValues
 from metrics.consistency import nees, squared_mahalanobis
 from metrics.gospa import single_target_gospa
 from metrics.position_error import mean_squared_error, squared_error
@@ -23,6 +25,13 @@ class ScoringRules:
     track_loss: TrackLoss
     gospa: Gospa
     first_scan: int  # index of the first scan that counts
+    calibration: Calibration | None = None
+    posterior_gap: PosteriorGap | None = None
+
+    @property
+    def need_posteriors(self) -> bool:
+        """Whether whole posteriors are scored."""
+        return self.calibration is not None or self.posterior_gap is not None
 
 
 @dataclass(frozen=True)
@@ -52,10 +61,12 @@ class SpanScores:
     scan_position_square: np.ndarray
     scan_velocity_square: np.ndarray
     scan_nees: np.ndarray
+    # where they are asked for
+    posterior: PosteriorScores | None = None
 
 
 TRIAL_COLUMNS = tuple(SpanScores.__dataclass_fields__)[:13]
-SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[13:]
+SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[13:-1]
 
 
 def failed_trials(tracks: Tracks) -> np.ndarray:
@@ -90,11 +101,16 @@ def loss_limit(rules: TrackLoss, reference: Tracks | None, axes: int) -> np.ndar
 
 
 def score_span(
-    truth: Truth, tracks: Tracks, reference: Tracks | None, rules: ScoringRules
+    truth: Truth,
+    tracks: Tracks,
+    reference: Tracks | None,
+    rules: ScoringRules,
+    posteriors: PosteriorValues | None = None,
 ) -> SpanScores:
     """Compare a strategy's tracks with the truth.
 
     reference   known association's tracks of the same scenes, where the rules need them
+    posteriors  what is said of its posteriors, where the rules ask for it
     """
     axes = truth.axes
     failed = failed_trials(tracks)
@@ -130,6 +146,11 @@ def score_span(
     def held_sum(values: np.ndarray) -> np.ndarray:
         return np.sum(values, axis=0, where=held)
 
+    posterior = None
+    if posteriors is not None:
+        levels = () if rules.calibration is None else rules.calibration.levels
+        posterior = posterior_scores(posteriors, failed, ~failed & (lost_at < 0), window, levels)
+
     return SpanScores(
         lost_at=lost_at,
         failed=failed,
@@ -148,4 +169,5 @@ def score_span(
         scan_position_square=held_sum(position_square),
         scan_velocity_square=held_sum(velocity_square),
         scan_nees=held_sum(consistency),
+        posterior=posterior,
     )

@@ -21,11 +21,21 @@ import pyarrow.parquet as pq
 from filelock import FileLock, Timeout
 
 from harness.trials.files import write_whole
+from harness.trials.posterior_scores import (
+    POSTERIOR_SCAN_COLUMNS,
+    POSTERIOR_TABLE_COLUMNS,
+    POSTERIOR_TRIAL_COLUMNS,
+    PosteriorScores,
+)
 from harness.trials.score import SCAN_COLUMNS, TRIAL_COLUMNS, SpanScores
 from harness.trials.task import Span, SpanResult
 
+_COUNTS_OF_POSTERIORS = {"posteriors", "gaps", "scan_posteriors", "scan_gaps", "scan_gaps_held"}
 _INTEGERS = {"lost_at", "estimates", "impossible", "outside", "scan_estimates"}
+_INTEGERS |= _COUNTS_OF_POSTERIORS | set(POSTERIOR_TABLE_COLUMNS)
 _FLAGS = {"failed"}
+# Null where posteriors were not asked for; tables lie trial by trial in one list.
+_POSTERIOR = (*POSTERIOR_TRIAL_COLUMNS, *POSTERIOR_TABLE_COLUMNS, *POSTERIOR_SCAN_COLUMNS)
 
 
 def _list_type(column: str) -> pa.DataType:
@@ -41,6 +51,7 @@ _SCHEMA = pa.schema(
         ("trials", pa.int32()),
         ("us_per_scan", pa.float64()),
         *((column, _list_type(column)) for column in (*TRIAL_COLUMNS, *SCAN_COLUMNS)),
+        *((column, _list_type(column)) for column in _POSTERIOR),
     ],
     metadata={"trackassay": "segment 1"},
 )
@@ -142,6 +153,10 @@ def _row(result: SpanResult) -> dict[str, object]:
         "trials": result.span.trials,
         "us_per_scan": result.us_per_scan,
         **{column: getattr(scores, column) for column in (*TRIAL_COLUMNS, *SCAN_COLUMNS)},
+        **{
+            column: None if scores.posterior is None else getattr(scores.posterior, column).ravel()
+            for column in _POSTERIOR
+        },
     }
 
 
@@ -166,14 +181,22 @@ def _contents(path: Path) -> Iterator[tuple[str, Span]]:
 def _results(path: Path, keys: list[str]) -> Iterator[SpanResult]:
     table = pq.read_table(path, schema=_SCHEMA, filters=[("case", "in", keys)])
     columns = {name: table[name] for name in _SCHEMA.names}
+
+    def values(names: Iterable[str], row: int) -> dict[str, np.ndarray]:
+        return {
+            name: np.array(columns[name][row].values.to_numpy(zero_copy_only=False))
+            for name in names
+        }
+
     for i in range(table.num_rows):
-        scores = SpanScores(
-            **{
-                name: np.array(columns[name][i].values.to_numpy(zero_copy_only=False))
-                for name in (*TRIAL_COLUMNS, *SCAN_COLUMNS)
-            }
-        )
         span = Span(columns["span"][i].as_py(), columns["trials"][i].as_py())
+        posterior = None
+        if columns["posteriors"][i].is_valid:
+            found = values(_POSTERIOR, i)
+            for name in POSTERIOR_TABLE_COLUMNS:
+                found[name] = found[name].reshape(span.trials, -1)
+            posterior = PosteriorScores(**found)
+        scores = SpanScores(**values((*TRIAL_COLUMNS, *SCAN_COLUMNS), i), posterior=posterior)
         yield SpanResult(
             columns["case"][i].as_py(), span, scores, columns["us_per_scan"][i].as_py()
         )

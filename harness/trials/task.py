@@ -12,6 +12,7 @@ from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 
 from filters.compiled import raising_what_compiled_code_raised
+from filters.posteriors import NOT_ASKED, Posteriors
 from filters.random_numbers import Numbers, numbers_of
 from filters.strategies.gaussian import KnownAssociation
 from filters.strategies.strategy import Assumptions, Strategy
@@ -22,10 +23,17 @@ from harness.scene.priors import prior_means
 from harness.scene.simulate import draw_scenes
 from harness.scene.truth import prior_of
 from harness.study.schema import Scene
+from harness.trials.posterior_values import (
+    PosteriorValues,
+    joined,
+    posterior_values,
+    reference_trials,
+)
 from harness.trials.score import ScoringRules, SpanScores, score_span
 
 SPAN = 100
 _SCANS_PER_BATCH = 50_000
+_TRIALS_RECORDED = 10  # at once, as whole posteriors take memory
 
 
 @dataclass(frozen=True)
@@ -60,6 +68,7 @@ class Task:
     spans: tuple[Span, ...]
     seed: int
     label: str  # for people: which condition
+    gap_reference: TaskCase | None = None  # whose posteriors the others are compared with
 
     @property
     def trials(self) -> int:
@@ -103,6 +112,7 @@ def run_task(task: Task) -> list[SpanResult]:
             trials = sum(span.trials for span in spans)
             batch = draw_scenes(task.scene, numbers, spans[0].first_trial, trials)
             reference = _reference(task, batch, numbers)
+            posteriors = {span: _posterior_values(task, span, numbers) for span in spans}
             for case in task.cases:
                 tracks, us_per_scan = _run_case(task.scene, case, batch, numbers)
                 for span in spans:
@@ -112,9 +122,46 @@ def run_task(task: Task) -> list[SpanResult]:
                         tracks_of(tracks, rows),
                         None if reference is None else tracks_of(reference, rows),
                         task.rules,
+                        posteriors[span].get(case.key),
                     )
                     results.append(SpanResult(case.key, span, scores, us_per_scan))
     return results
+
+
+def _posterior_values(task: Task, span: Span, numbers: Numbers) -> dict[str, PosteriorValues]:
+    """What the posteriors of every case say on a span, by key; nothing where it is not asked.
+
+    Strategies run once more for it, so that their cost is measured without the recording.
+    """
+    if not task.rules.need_posteriors:
+        return {}
+    parts: dict[str, list[PosteriorValues]] = {case.key: [] for case in task.cases}
+    end = span.first_trial + span.trials
+    for first in range(span.first_trial, end, _TRIALS_RECORDED):
+        batch = draw_scenes(task.scene, numbers, first, min(_TRIALS_RECORDED, end - first))
+        recorded = {case.key: _recorded(task.scene, case, batch, numbers) for case in task.cases}
+        references = None
+        if task.gap_reference is not None and task.rules.posterior_gap is not None:
+            own = recorded.get(task.gap_reference.key)
+            if own is None:
+                own = _recorded(task.scene, task.gap_reference, batch, numbers)
+            references = reference_trials(
+                own, task.rules.posterior_gap, batch.truth.axes, numbers, first
+            )
+        for key, posteriors in recorded.items():
+            parts[key].append(
+                posterior_values(
+                    posteriors, batch.truth, task.rules.calibration, references, numbers, first
+                )
+            )
+    return {key: joined(values) for key, values in parts.items()}
+
+
+def _recorded(scene: Scene, case: TaskCase, batch: SceneBatch, numbers: Numbers) -> Posteriors:
+    if not type(case.strategy).has_posteriors:
+        return NOT_ASKED
+    tracks, _ = _run_case(scene, case, batch, numbers, record=True)
+    return tracks.posteriors
 
 
 def _batches(task: Task) -> Iterator[list[Span]]:
@@ -149,13 +196,13 @@ def run_task_safely(
 
 
 def _run_case(
-    scene: Scene, case: TaskCase, batch: SceneBatch, numbers: Numbers
+    scene: Scene, case: TaskCase, batch: SceneBatch, numbers: Numbers, record: bool = False
 ) -> tuple[Tracks, float]:
     assumptions = assumptions_of(case.assumed, scene, batch, numbers)
     is_told = type(case.strategy).is_told_origins
     scans = batch.scans if is_told else batch.scans_without_origins
     started = time.thread_time_ns()
-    tracks = case.strategy.run(assumptions, scans, numbers, batch.first_trial)
+    tracks = case.strategy.run(assumptions, scans, numbers, batch.first_trial, record)
     spent = time.thread_time_ns() - started
     return tracks, spent / 1000 / scans.origins.size
 

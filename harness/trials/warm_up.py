@@ -44,11 +44,15 @@ def _models(scene: Scene) -> tuple[object, ...]:
 
 def _shortest(task: Task, case: TaskCase) -> Task:
     short_case = replace(case, assumed=case.assumed.with_first_scans(2))
+    reference = task.gap_reference
+    if reference is not None:
+        reference = replace(reference, assumed=reference.assumed.with_first_scans(2))
     return replace(
         task,
         scene=task.scene.with_first_scans(2),
         rules=replace(task.rules, first_scan=0),
         cases=(short_case,),
+        gap_reference=reference,
         spans=(Span(0, 1),),
     )
 
