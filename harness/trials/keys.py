@@ -25,6 +25,7 @@ _SCENE_SOURCES = (
     "filters/cholesky.py",
     "harness/scene",
     "harness/study/legs.py",
+    "harness/study/names.py",
     "harness/study/schema.py",
     "harness/study/unmodelled.py",
     "harness/trials/task.py",

@@ -201,8 +201,9 @@ def _run_case(
     assumptions = assumptions_of(case.assumed, scene, batch, numbers)
     is_told = type(case.strategy).is_told_origins
     scans = batch.scans if is_told else batch.scans_without_origins
+    asked = {"record": True} if record else {}  # only families with posteriors know it
     started = time.thread_time_ns()
-    tracks = case.strategy.run(assumptions, scans, numbers, batch.first_trial, record)
+    tracks = case.strategy.run(assumptions, scans, numbers, batch.first_trial, **asked)
     spent = time.thread_time_ns() - started
     return tracks, spent / 1000 / scans.origins.size
 

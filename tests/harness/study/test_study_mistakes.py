@@ -13,7 +13,8 @@ SPREADS = "start_position_sd_m = [8.0, 8.0]\nstart_velocity_sd_m_per_s = [1.0, 1
 REGION = "region_m = [[-400.0, 400.0], [-400.0, 400.0]]"
 PDA = 'kind = "pda"'
 KINDS = (
-    "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, particle-filter, "
+    "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, unreduced-mixture, "
+    "particle-filter, "
     "known-association"
 )
 MOTIONS = (

@@ -1,10 +1,9 @@
 from __future__ import annotations
 
-from dataclasses import fields
-
 import pytest
 
 from harness.trials.files import write_text_whole, write_whole
+from harness.trials.score import SCAN_COLUMNS, TRIAL_COLUMNS
 from harness.trials.store import StoreError, locked_store
 from harness.trials.task import Span, run_task, spans_of
 
@@ -30,9 +29,10 @@ def test_what_was_stored_comes_back_to_the_bit(tmp_path, results):
     for one in found["pda"] + found["known"]:
         original = stored.pop((one.key, one.span))
         assert one.us_per_scan == original.us_per_scan
-        for field in fields(one.scores):
-            ours, theirs = getattr(one.scores, field.name), getattr(original.scores, field.name)
-            assert ours.astype(theirs.dtype).tobytes() == theirs.tobytes(), field.name
+        for name in (*TRIAL_COLUMNS, *SCAN_COLUMNS):
+            ours, theirs = getattr(one.scores, name), getattr(original.scores, name)
+            assert ours.astype(theirs.dtype).tobytes() == theirs.tobytes(), name
+        assert one.scores.posterior is None
     assert not stored
 
 
