@@ -6,24 +6,38 @@ from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field
 
-from filters.particle_filter import ParticleStrategy, cloud_for, compiled_particle_filter
+from filters.models.record import NonNegative
+from filters.particle_filter import ParticleStrategy, compiled_particle_filter
+from filters.particles.cloud import DETECTIONS, MOTION, cloud_for
+from filters.particles.resampling import STRATIFIED, SYSTEMATIC
 from filters.random_numbers import Numbers
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
 
 ParticleCount = Annotated[int, Field(strict=True, ge=2, le=10_000_000)]
 Share = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0.0, le=1.0)]
+PROPOSALS = {"motion": MOTION, "detections": DETECTIONS}
+RESAMPLINGS = {"systematic": SYSTEMATIC, "stratified": STRATIFIED}
 
 
 class ParticleFilter(Strategy):
-    """A bootstrap particle filter with the association summed out of the likelihood."""
+    """A particle filter with the association summed out of the likelihood."""
 
     kind: Literal["particle-filter"]
     """Which strategy: particle filter."""
     particles: ParticleCount = 1000
     """Number of samples."""
+    proposal: Literal["motion", "detections"] = "motion"
+    """Where particles are drawn: from the motion alone (bootstrap), or from a mixture of it and,
+    for each detection, what a linearised Kalman filter of the particle makes of that detection."""
     resample_below: Share = 0.5
     """Resample when the effective number of samples falls below this share of `particles`."""
+    resampling: Literal["systematic", "stratified"] = "systematic"
+    """How copies are chosen when resampling: one random number for all, or one for each."""
+    roughening: NonNegative = 0.0
+    """Jitter after resampling, which moves the posterior: in a state of n numbers the standard
+    deviation is this factor times that number's range over the N particles, times N^(-1/n). 0 is
+    none."""
     gate_probability: GateProbability = 0.9997
     """Only for ending the track after empty scans: the filter itself has no gate."""
 
@@ -41,13 +55,14 @@ class ParticleFilter(Strategy):
         n = len(assumptions.prior.mean)
         m = scans.detections.shape[1]
         settings = ParticleStrategy(
-            self.particles,
             self.resample_below,
+            RESAMPLINGS[self.resampling],
+            self.roughening,
             gate_of(self.gate_probability, m),
             self.ends.rule(assumptions.axes),
         )
         tracks = room_for_tracks(scans, n)
-        compiled_particle_filter(n, m)(
+        compiled_particle_filter(n, m, PROPOSALS[self.proposal])(
             assumptions.models,
             settings,
             assumptions.prior,

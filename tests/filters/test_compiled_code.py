@@ -177,6 +177,8 @@ EVERY_STRATEGY = """
     scans = as_scans(drawn.trials, 1)
     strategies = [nearest_neighbour(), most_probable_hypothesis(), pda(), gaussian_mixture()]
     strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}))
+    settings = {"proposal": "detections", "resampling": "stratified", "roughening": 0.1}
+    strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}, **settings))
     found = [run_on(world, strategy, scans) for strategy in strategies]
     told = scans._replace(origins=drawn.origins.astype(np.int64))
     found.append(run_on(world, known_association(), told))

@@ -166,7 +166,8 @@ def test_hundreds_of_detections_and_none_keep_everything_finite(
     scans = as_scans([[*wide, same, same[:0], wide[0], same[:1]]], axes)
     for name, strategy in GAUSSIAN.items():
         assert_sound(run_on(world, strategy, scans), name)
-    assert_sound(run_on(world, ALL["particles"], scans), "particles", positive=False)
+    for strategy in (ALL["particles"], particle_filter(particles=64, proposal="detections")):
+        assert_sound(run_on(world, strategy, scans), "particles", positive=False)
 
 
 def test_priors_may_be_ten_million_times_vaguer_than_the_sensor():

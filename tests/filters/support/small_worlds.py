@@ -20,6 +20,9 @@ from filters.models.motion import (
     PiecewiseConstantAcceleration,
 )
 from filters.models.sensor import PositionSensor
+from filters.particle_filter import ParticleStrategy, compiled_particle_filter
+from filters.particles.cloud import MOTION, cloud_for
+from filters.particles.resampling import SYSTEMATIC
 from filters.random_numbers import numbers_of
 from filters.reductions.prune_merge_cap import prune_merge_cap
 from filters.strategies import (
@@ -326,3 +329,33 @@ def look_inside(world, scans, gate_probability=1.0, reduction=NO_REDUCTION):
     table = room.hypotheses.table[:rows]
     covariances = room.hypotheses.covariances[table["covariance"]]
     return LookInside(table, room.hypotheses.means[:rows], covariances, room)
+
+
+def run_particles(
+    world,
+    scans,
+    particles=400,
+    *,
+    proposal=MOTION,
+    resample_below=0.0,
+    resampling=SYSTEMATIC,
+    roughening=0.0,
+    first_trial=0,
+):
+    """Run the particle filter's kernel; return tracks and the cloud after the last scan."""
+    n, m = len(world.assumptions.prior.mean), scans.detections.shape[1]
+    gate = gate_of(1.0, m)
+    settings = ParticleStrategy(resample_below, resampling, roughening, gate, NEVER)
+    tracks = room_for_tracks(scans, n)
+    cloud = cloud_for(n, m, particles, scans.most_detections)
+    compiled_particle_filter(n, m, proposal)(
+        world.assumptions.models,
+        settings,
+        world.assumptions.prior,
+        scans,
+        first_trial,
+        numbers_of(3),
+        tracks,
+        cloud,
+    )
+    return tracks, cloud

@@ -1,0 +1,1 @@
+"""Parts of the particle filter: the cloud, how it is proposed, weighed, resampled and roughened."""
