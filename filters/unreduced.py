@@ -54,6 +54,7 @@ def capacity_unreduced(scans: Scans, n: int, first_trial: int = 0) -> int:
         raise ValueError(
             f"trial {first_trial + trial} would need {components[trial]:.3g} components unreduced, "
             f"for {end - first} detections in {scans.offsets.shape[1] - 1} scans, and {most:.3g} "
-            f"fit into {MOST_BYTES / 1e9:.3g} GB; take fewer scans or less clutter, or prune"
+            f"fit into {MOST_BYTES / 1e9:.3g} GB; take fewer scans or less clutter, "
+            "or a gaussian-mixture"
         )
     return int(components[trial])

@@ -76,9 +76,10 @@ def run(
         )
     finally:
         line.close()
-    if figures:
-        api.draw(outcome.folder)
-    print(api.closing_words(outcome, _width()))
+    if not outcome.results.summary.empty:
+        if figures:
+            api.draw(outcome.folder)
+        print(api.closing_words(outcome, _width()))
     for one in outcome.set_aside:
         _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
     if outcome.set_aside:

@@ -13,7 +13,12 @@ import numpy as np
 
 from harness.evidence.case_scores import CaseScores
 from metrics.intervals import mean_influence, mean_interval
-from metrics.paired import holm_adjust, loss_rate_difference, root_mean_ratio
+from metrics.paired import (
+    holm_adjust,
+    loss_rate_difference,
+    mean_difference,
+    root_mean_ratio,
+)
 
 Cases = Mapping[str, CaseScores]
 LEVEL = 0.95
@@ -38,6 +43,8 @@ def best_in(cases: Cases) -> dict[str, list[str]]:
         value, p_value = _mean_square(column), _mean_square_p_value(column)
         mark(f"rmse_{error}", _not_told_apart(contenders, value, p_value))
     mark("anees", [name for name in contenders if _is_consistent(cases[name])])
+    if all(case.scores.posterior is not None for case in cases.values()):
+        mark("log_score", _not_told_apart(contenders, _log_score, _log_score_p_value))
     mark("gospa", _not_told_apart(cases, _gospa, _gospa_p_value))
     return found
 
@@ -100,6 +107,21 @@ def _gospa(case: CaseScores) -> float:
 def _gospa_p_value(first: CaseScores, second: CaseScores) -> float:
     both = first.counted & second.counted
     return root_mean_ratio(first.gospa_power[both], second.gospa_power[both], first.order).p_value
+
+
+def _log_scores(case: CaseScores) -> np.ndarray:
+    posterior = case.scores.posterior
+    return np.full(case.trials, np.nan) if posterior is None else posterior.log_score
+
+
+def _log_score(case: CaseScores) -> float:
+    return mean_influence(_log_scores(case)[case.held])[0]
+
+
+def _log_score_p_value(first: CaseScores, second: CaseScores) -> float:
+    both = first.held & second.held
+    ours, theirs = (_log_scores(case)[both, np.newaxis] for case in (first, second))
+    return mean_difference(ours, theirs).p_value
 
 
 def _is_consistent(case: CaseScores) -> bool:

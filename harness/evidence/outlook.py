@@ -14,7 +14,9 @@ from scipy.stats import chi2
 from filters.models.contract import Models
 from filters.random_numbers import numbers_of
 from filters.strategies.gaussian import GatedStrategy, KnownAssociation
+from filters.strategies.unreduced import UnreducedMixture
 from filters.track import Tracks
+from filters.unreduced import components_unreduced, most_components
 from harness.evidence.plans import KeyedCondition, keyed_conditions
 from harness.scene.batch import SceneBatch
 from harness.scene.models import models_of
@@ -29,6 +31,16 @@ SCENES = 50
 _MOST_CONDITIONS = 200
 _SCENES_FOR_GATES = 3
 _MOST_OUTSIDE = 0.01
+_MUCH_OF_THE_ROOM = 0.1  # expected components above it make a trial without room likely
+
+
+@dataclass(frozen=True)
+class Unreduced:
+    """How large unreduced mixtures grow in a condition, and how large they may."""
+
+    expected: float  # components after the last scan: product over scans of 1 + mean detections
+    refused: float  # share of the scenes drawn that need more than there is room for
+    most: float  # components for which there is room
 
 
 @dataclass(frozen=True)
@@ -42,6 +54,7 @@ class ConditionOutlook:
     measurement_size: int
     outside: float  # share of scans with the target outside the region
     reference_lost: float  # share of scenes in which known association itself is lost
+    unreduced: Unreduced
 
     def false_detections_in_gate(self, gate_probability: float) -> float:
         """Expected false detections in a gate of that probability; infinite without a gate."""
@@ -88,7 +101,24 @@ class Outlook:
                 f"known association itself is lost in up to {worst.reference_lost:.1%} of scenes "
                 f"({worst.label}): raise the limit of track_loss, or it measures the sensor"
             )
-        return found
+        return found + self._too_long_unreduced()
+
+    def _too_long_unreduced(self) -> list[str]:
+        strategies = self.study.record.strategies.items()
+        names = [name for name, one in strategies if isinstance(one, UnreducedMixture)]
+        if not names or not self.conditions:
+            return []
+        worst = max(
+            self.conditions, key=lambda one: (one.unreduced.refused, one.unreduced.expected)
+        )
+        size = worst.unreduced
+        if size.refused == 0 and size.expected < _MUCH_OF_THE_ROOM * size.most:
+            return []
+        return [
+            f"{names[0]} would keep {size.expected:.2g} components by the last scan, as expected "
+            f"({worst.label}), and {size.most:.2g} fit; {size.refused:.0%} of these scenes need "
+            "more, and one such trial stops its task: take fewer scans or less clutter"
+        ]
 
 
 def look_ahead(study: Study) -> Outlook:
@@ -123,7 +153,17 @@ def _look_at(keyed: KeyedCondition, seed: int) -> ConditionOutlook:
         scene.sensor.measurement_size,
         float(batch.truth.outside.mean()),
         float(np.mean(scores.lost_at >= 0)),
+        _unreduced(batch, tracks.means.shape[-1]),
     )
+
+
+def _unreduced(batch: SceneBatch, n: int) -> Unreduced:
+    scans = batch.scans
+    most = most_components(n, scans.most_detections)
+    mean_detections = np.diff(scans.offsets, axis=1).mean(axis=0)
+    with np.errstate(over="ignore"):
+        expected = float(np.prod(1.0 + mean_detections))
+    return Unreduced(expected, float(np.mean(components_unreduced(scans) > most)), most)
 
 
 def _clutter_in_unit_gate(models: Models, batch: SceneBatch, tracks: Tracks) -> float:

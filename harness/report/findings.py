@@ -197,7 +197,7 @@ def _range(rows: pd.DataFrame, metric: str, quantity: Quantity) -> str:
 
 
 def _calibration(results: Results, metric: str) -> str:
-    """Whose claimed errors are too small: the interval of ANEES lies above what is expected."""
+    """Whose claimed errors are too small: the interval lies beyond what is expected."""
     conditions = len(settings_of(results))
     counts = {name: over_confident(results, metric, name) for name in rivals(results)}
     guilty = sorted((name for name in counts if counts[name]), key=lambda name: -counts[name])
@@ -212,9 +212,11 @@ def _calibration(results: Results, metric: str) -> str:
 
 
 def over_confident(results: Results, metric: str, name: str) -> int:
-    """In how many conditions a strategy's interval lies wholly above the expected value."""
-    expected = metric_quantity(results, metric).expected
-    return int((_of(results, name)[f"{metric}_low"] > expected).sum())
+    """In how many conditions a strategy's whole interval lies on the wrong side of the expected."""
+    quantity, cases = metric_quantity(results, metric), _of(results, name)
+    if quantity.confident_below:
+        return int((cases[f"{metric}_high"] < quantity.expected).sum())
+    return int((cases[f"{metric}_low"] > quantity.expected).sum())
 
 
 def _holding_levels(results: Results, name: str, swept: SweptKey) -> list[float]:

@@ -92,7 +92,12 @@ def load_results(folder: Path) -> Results:
                 f"{folder / name}: not as it was written (its digest differs from the manifest's); "
                 "run the study again to restore it"
             )
-    summary = pd.read_csv(folder / _SUMMARY, keep_default_na=True, dtype={"best_in": str})
+    try:
+        summary = pd.read_csv(folder / _SUMMARY, keep_default_na=True, dtype={"best_in": str})
+    except pd.errors.EmptyDataError as error:
+        raise ResultsError(
+            f"{folder}: holds no case, as every task was set aside; {MANIFEST} says why"
+        ) from error
     summary["best_in"] = summary["best_in"].fillna("")
     scans = pd.read_parquet(folder / _SCANS)
     has_calibration = _CALIBRATION in manifest["files"]

@@ -20,6 +20,7 @@ class Quantity:
     held      whether it is over trials that held track only
     whole     whether it is a count
     expected  its value for an honest strategy, where there is one
+    confident_below  whether over-confidence makes it smaller than that, not larger
     """
 
     name: str
@@ -29,6 +30,12 @@ class Quantity:
     held: bool = False
     whole: bool = False
     expected: float | None = None
+    confident_below: bool = False
+
+    @property
+    def expected_shown(self) -> float | None:
+        """The expected value in the unit."""
+        return None if self.expected is None else self.scale * self.expected
 
     @property
     def head(self) -> str:
@@ -63,7 +70,7 @@ METRICS = {
     "log_score": Quantity("log score", "nats", held=True),
     "region_level": Quantity("mean region level", held=True, expected=0.5),
     "central_level": Quantity("mean central level", held=True, expected=0.5),
-    "posterior_gap_ise": Quantity("posterior gap, squared error", "%", 100.0),
+    "posterior_gap_ise": Quantity("posterior gap, squared error", "%", 100.0, rate=True),
     "posterior_gap_kl": Quantity("posterior gap, divergence", "nats", held=True),
     "failed": Quantity("failed trials", whole=True),
     "trials": Quantity("trials", whole=True),
@@ -95,7 +102,8 @@ def metric_quantity(results: Results, metric: str) -> Quantity:
     if metric.startswith("coverage_"):
         level = metric.removeprefix("coverage_")
         expected = float(level) / 100.0
-        return Quantity(f"coverage of {level} % regions", "%", 100.0, held=True, expected=expected)
+        name = f"coverage of {level} % regions"
+        return Quantity(name, "%", 100.0, held=True, expected=expected, confident_below=True)
     if metric.startswith("gospa_"):
         order = float(results.document.get("gospa", {}).get("order", 2))
         return replace(quantity, unit="m" if order == 1 else f"m{order:g}")

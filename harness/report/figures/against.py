@@ -102,8 +102,8 @@ def metric_against(results: Results, metric: str, key: str, fixed: Setting | Non
     for place, panel in enumerate(curves):
         apply_x(page.panels[place], x_scale, labelled=page.is_bottom(place))
         apply_y(page.panels[place], y_scale, labelled=page.is_left(place))
-        if quantity.expected is not None:
-            page.panels[place].axhline(quantity.expected, color=style.BLACK, lw=0.8, ls=":")
+        if quantity.expected_shown is not None:
+            page.panels[place].axhline(quantity.expected_shown, color=style.BLACK, lw=0.8, ls=":")
         for name, curve in panel.items():
             draw_curve(page.panels[place], curve, look[name], y_scale, x_key.numeric, bands)
         ends = [curve_end(name, look[name], c, x_scale, y_scale) for name, c in panel.items()]
@@ -213,5 +213,5 @@ def _subtitle(
     if quantity.held:
         parts.append("over trials that held track")
     if quantity.expected is not None:
-        parts.append(f"dotted: {quantity.expected:g}, as expected of an honest strategy")
+        parts.append(f"dotted: {quantity.expected_shown:g}, as expected of an honest strategy")
     return "; ".join(parts)

@@ -10,6 +10,8 @@ from typing import TYPE_CHECKING
 
 from harness.evidence.results import Results
 from harness.report.figures.against import LOSS, clutter_key, metric_against
+from harness.report.figures.calibration import coverage_of_regions, transform_histograms
+from harness.report.figures.gap import GAPS, gap_over_time
 from harness.report.figures.over_time import over_time
 from harness.report.figures.panels import MOST_PANELS, panel_keys, setting_in_words
 from harness.report.figures.side_by_side import SHOWN, side_by_side
@@ -28,17 +30,29 @@ def all_figures(results: Results) -> dict[str, Figure]:
 
     Track loss, position error and ANEES against the clutter (or else the key of most levels), track
     loss against each other swept key, and a few telling conditions over time. Without a sweep, the
-    strategies side by side.
+    strategies side by side. Of whole posteriors, what the study asks for.
     """
     main = main_key(results)
+    asked = posterior_figures(results)
     if main is None:
-        return {"strategies": side_by_side(results), "over_time": over_time(results)}
+        return {"strategies": side_by_side(results), "over_time": over_time(results), **asked}
     figures: dict[str, Figure] = {}
     for metric in SHOWN:
         figures |= figures_against(results, metric, main)
     for key in panel_keys(results, main):
         figures |= figures_against(results, LOSS, key)
-    return {**figures, "over_time": over_time(results)}
+    return {**figures, "over_time": over_time(results), **asked}
+
+
+def posterior_figures(results: Results) -> dict[str, Figure]:
+    """What the study asks of whole posteriors: histograms, coverage, and the gap over time."""
+    figures: dict[str, Figure] = {}
+    if not results.calibration.empty:
+        figures["transforms"] = transform_histograms(results)
+        figures["coverage"] = coverage_of_regions(results)
+    if GAPS[0] in results.scans:
+        figures["posterior_gap"] = gap_over_time(results)
+    return figures
 
 
 def figures_against(results: Results, metric: str, key: str) -> dict[str, Figure]:

@@ -61,7 +61,7 @@ def over_time(results: Results, settings: Sequence[Setting] | None = None) -> Fi
     settings   one column each; default: the easiest, the middle and the hardest condition
     raises     ValueError: a setting is no condition or several, or there are more than four
     """
-    told = _told(results, settings)
+    told = told_conditions(results, settings)
     names = strategy_key(results).levels
     rows = (("rmse_position", _ERROR), ("nees", _NEES), ("lost", _LOST))
     heads = [one.head for one in told]
@@ -69,7 +69,7 @@ def over_time(results: Results, settings: Sequence[Setting] | None = None) -> Fi
     layout = layout_with_names(grid, _PANEL_HEIGHT, names)
     page = new_page(_title(results, told), _subtitle(results), layout)
     for row, (column, quantity) in enumerate(rows):
-        _draw_row(page, row, told, column, quantity, results)
+        draw_row(page, row, told, column, quantity, results, names)
     name_curves_below(page, {name: looks(results)[name] for name in names})
     return page.figure
 
@@ -100,7 +100,11 @@ def _means(values: Sequence[tuple[float, float]]) -> tuple[float, ...]:
     )
 
 
-def _told(results: Results, settings: Sequence[Setting] | None) -> list[Told]:
+def told_conditions(results: Results, settings: Sequence[Setting] | None = None) -> list[Told]:
+    """The conditions of these settings; default: those of `telling_conditions`.
+
+    raises     ValueError: a setting is no condition or several, or there are more than four
+    """
     keys = swept_keys(results)
     if settings is None:
         chosen: list[tuple[str, Setting]] = list(telling_conditions(results).items())
@@ -122,16 +126,18 @@ def _told(results: Results, settings: Sequence[Setting] | None) -> list[Told]:
     return told
 
 
-def _draw_row(
+def draw_row(
     page: Page,
     row: int,
     told: Sequence[Told],
     column: str,
     quantity: Quantity,
     results: Results,
+    names: Sequence[str],
 ) -> None:
+    """One quantity over time: a panel a condition, a curve for each of the strategies named."""
     look = looks(results)
-    scale = _y_scale(told, column, quantity)
+    scale = _y_scale(told, column, quantity, names)
     for place, one in enumerate(told, start=row * len(told)):
         axes = page.panels[place]
         x_scale = _time_scale(one.scans)
@@ -141,7 +147,7 @@ def _draw_row(
         if column == "nees":
             _draw_bounds(axes, one.scans)
         ends = []
-        for number, name in enumerate(strategy_key(results).levels):
+        for number, name in enumerate(names):
             scans = one.scans[one.scans[STRATEGY] == name]
             y = quantity.scale * scans[column].to_numpy(float)
             if scale.logarithmic:
@@ -154,8 +160,9 @@ def _draw_row(
             say_empty(axes)
 
 
-def _y_scale(told: Sequence[Told], column: str, quantity: Quantity) -> Scale:
-    values = np.concatenate([one.scans[column].to_numpy(float) for one in told])
+def _y_scale(told: Sequence[Told], column: str, quantity: Quantity, names: Sequence[str]) -> Scale:
+    shown = [one.scans[one.scans[STRATEGY].isin(names)] for one in told]
+    values = np.concatenate([scans[column].to_numpy(float) for scans in shown])
     bounds = [one.scans[["nees_low", "nees_high"]].to_numpy(float).ravel() for one in told]
     scale = metric_scale(
         quantity,

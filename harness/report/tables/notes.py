@@ -17,9 +17,8 @@ FEWEST_EFFECTIVE_TRIALS = 25
 def sign_meaning(quantity: Quantity) -> str:
     """What a marked cell of a metric is."""
     if quantity.expected is not None:
-        return (
-            f"its interval holds {quantity.expected:g}, and none loses significantly fewer tracks"
-        )
+        expected = f"{quantity.expected_shown:g}"
+        return f"its interval holds {expected}, and none loses significantly fewer tracks"
     best = "best, or not told apart from the best (paired by trial, corrected)"
     return f"{best}; none loses significantly fewer tracks" if quantity.held else best
 
@@ -29,7 +28,14 @@ def metric_notes(results: Results, metric: str, quantity: Quantity) -> tuple[str
     summary = results.summary
     notes = []
     if quantity.expected is not None:
-        notes.append("1 is expected; above it a strategy is over-confident, below it too cautious.")
+        sides = ("below", "above") if quantity.confident_below else ("above", "below")
+        notes.append(
+            f"{quantity.expected_shown:g} is expected; {sides[0]} it a strategy is over-confident, "
+            f"{sides[1]} it too cautious."
+        )
+    if metric.startswith("posterior_gap_"):
+        reference = results.document["posterior_gap"]["reference"]
+        notes.append(f"From the posterior of {reference}, over position and velocity.")
     if quantity.held:
         notes.append("Over trials that held track: read it beside the track loss.")
         notes += _thin_evidence(summary)
