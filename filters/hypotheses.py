@@ -30,9 +30,11 @@ HYPOTHESIS = np.dtype(
         ("covariance", np.int64),
         ("mode", np.int64),  # which of the motions the component moved by
         # for the reduction's own use
+        ("listed", np.int64),  # a row in the list that begins in row 0
         ("group", np.int64),
         ("partner", np.int64),
         ("group_weight", np.float64),
+        ("log_determinant", np.float64),
         ("cost", np.float64),
     ],
     align=True,

@@ -1,9 +1,9 @@
 """Prune, merge greedily, cap: the reduction of a Gaussian mixture.
 
 Weights below a share of the total are dropped. Then, from the heaviest hypothesis i on, every j
-with (mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched, if
-it moved by the same of the motions.
-Then the heaviest groups are kept. Weights are rescaled after each step.
+with (mu_i - mu_j)' P_i^-1 (mu_i - mu_j) below a limit joins i's group, whose moments are matched;
+components that moved by different motions never meet. Then the heaviest groups are kept. Weights
+are rescaled after each step.
 
 Source: the clustering algorithm of Salmond (1990), SPIE 1305, Mixture reduction algorithms for
 target tracking in clutter, with the heaviest component's own covariance as measure of distance.
@@ -21,21 +21,10 @@ from filters.compiled import helper
 from filters.hypotheses import Hypotheses
 from filters.mixture import Mixture, add_to_covariance, add_to_mean, clear_moments, mirror
 from filters.reductions.reduction import Reduction
+from filters.reductions.selection import drop_light, rescale
 
 _DROPPED = -2
 _FREE = -1
-
-
-@helper
-def _prune(table: Any, rows: int, prune_below: float) -> None:
-    """Drop light rows; the heaviest always stays."""
-    most = 0.0
-    for h in range(rows):
-        most = max(most, table[h].weight)
-    limit = min(prune_below, most)
-    for h in range(rows):
-        kept = table[h].weight >= limit and table[h].weight > 0.0
-        table[h].group = _FREE if kept else _DROPPED
 
 
 @helper
@@ -102,6 +91,8 @@ def _merge(n: int, hypotheses: Hypotheses, rows: int, merge_below: float) -> Non
     table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
     work = hypotheses.work[0]
     factor = work[2:]
+    for h in range(rows):
+        table[h].group = _FREE if table[h].weight > 0.0 else _DROPPED
     head = _heaviest_free(table, rows)
     while head >= 0:
         factorised = factorise(n, covariances[table[head].covariance], factor)
@@ -115,16 +106,13 @@ def _keep_heaviest(n: int, hypotheses: Hypotheses, rows: int, most: int, mixture
     """Write the heaviest groups, rescaled to a total of one."""
     table = hypotheses.table
     count = 0
-    total = 0.0
     head = _heaviest_group(table, rows)
     while head >= 0 and count < most:
         _write_group(n, head, hypotheses, rows, mixture, count)
-        total += table[head].group_weight
         table[head].group_weight = 0.0  # written
         count += 1
         head = _heaviest_group(table, rows)
-    for place in range(count):
-        mixture.weights[place] /= total
+    rescale(mixture.weights, count)
     return count
 
 
@@ -132,7 +120,7 @@ def _prune_merge_cap(n: int) -> Callable[..., int]:
     """Prune, merge greedily from the heaviest, keep the heaviest."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
-        _prune(hypotheses.table, rows, settings[0])
+        drop_light(hypotheses.table, rows, settings[0])
         _merge(n, hypotheses, rows, settings[1])
         return _keep_heaviest(n, hypotheses, rows, int(settings[2]), mixture)
 

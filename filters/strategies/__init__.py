@@ -1,11 +1,16 @@
 """Strategies: ways to follow one target through clutter, one file a family."""
 
 from filters.strategies.gaussian import (
-    GaussianMixture,
     KnownAssociation,
     MostProbableHypothesis,
     NearestNeighbour,
     ProbabilisticDataAssociation,
+)
+from filters.strategies.mixtures import (
+    GaussianMixture,
+    NScanMixture,
+    PrunedMixture,
+    RunnallsMixture,
 )
 from filters.strategies.particles import ParticleFilter
 from filters.strategies.unreduced import UnreducedMixture
@@ -15,6 +20,9 @@ STRATEGIES = (
     MostProbableHypothesis,
     ProbabilisticDataAssociation,
     GaussianMixture,
+    PrunedMixture,
+    RunnallsMixture,
+    NScanMixture,
     UnreducedMixture,
     ParticleFilter,
     KnownAssociation,

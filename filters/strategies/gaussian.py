@@ -2,23 +2,18 @@
 
 from __future__ import annotations
 
-from typing import Annotated, ClassVar, Literal
-
-from pydantic import Field
+from typing import ClassVar, Literal
 
 from filters.hypothesis_filter import (
-    ESTIMATE_HEAVIEST,
     ESTIMATE_MEAN,
     HypothesisStrategy,
     compiled_filter,
     room_for,
 )
-from filters.models.record import Count, NonNegative
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
 from filters.reductions.match_moments import MATCH_MOMENTS
-from filters.reductions.prune_merge_cap import prune_merge_cap
 from filters.reductions.reduction import Reduction
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
@@ -122,29 +117,6 @@ class ProbabilisticDataAssociation(GatedStrategy):
     def reduction(self) -> Reduction:
         """Match the moments of all."""
         return MATCH_MOMENTS
-
-
-class GaussianMixture(GatedStrategy):
-    """Keeps several components: light ones pruned, close ones merged, the heaviest kept."""
-
-    kind: Literal["gaussian-mixture"]
-    """Which strategy: Gaussian mixture."""
-    max_components: Annotated[Count, Field(le=10_000)] = 20
-    """Most components kept after each scan."""
-    prune_below: Annotated[NonNegative, Field(lt=1.0)] = 1e-4
-    """Components of less weight than this share of the total are dropped."""
-    merge_below: NonNegative = 0.5
-    """Components closer than this squared distance to a heavier one are merged with it."""
-    estimate: Literal["mean", "heaviest"] = "mean"
-    """What is reported: mean and matched covariance, or the heaviest component."""
-
-    def reduction(self) -> Reduction:
-        """Prune, merge, cap."""
-        return prune_merge_cap(self.prune_below, self.merge_below, self.max_components)
-
-    def estimate_choice(self) -> int:
-        """How the mixture becomes one estimate."""
-        return ESTIMATE_HEAVIEST if self.estimate == "heaviest" else ESTIMATE_MEAN
 
 
 class KnownAssociation(GaussianStrategy):

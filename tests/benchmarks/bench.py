@@ -32,8 +32,11 @@ from filters.strategies import (
     KnownAssociation,
     MostProbableHypothesis,
     NearestNeighbour,
+    NScanMixture,
     ParticleFilter,
     ProbabilisticDataAssociation,
+    PrunedMixture,
+    RunnallsMixture,
 )
 from filters.strategies.strategy import Strategy
 from filters.track import Tracks, room_for_tracks
@@ -46,6 +49,13 @@ STRATEGIES = (
     PDA,
     GaussianMixture(kind="gaussian-mixture"),
     KnownAssociation(kind="known-association"),
+)
+# Each with the least ratio wanted of a scan in C to one of its hypotheses.
+MIXTURES = (
+    (GaussianMixture(kind="gaussian-mixture"), 0.16 / 0.4),
+    (PrunedMixture(kind="pruned-mixture"), 0.16 / 0.25),
+    (NScanMixture(kind="n-scan-mixture"), None),
+    (RunnallsMixture(kind="runnalls-mixture"), None),
 )
 PARTICLE_FILTER = ParticleFilter(kind="particle-filter")
 
@@ -137,6 +147,24 @@ def strategy_rows(batch: Drawn) -> list[Record]:
     return rows
 
 
+def mixture_rows(batch: Drawn) -> list[Record]:
+    """Rows of the mixtures, a hypothesis of theirs against a scan of the PDA in C."""
+    things = [lambda strategy=strategy: run(strategy, batch) for strategy, _ in MIXTURES]
+    with tempfile.TemporaryDirectory() as folder:
+        try:
+            in_c = c_pda(Path(folder), linear_model(), batch.scans)
+        except NoCompiler as reason:
+            print(f"No rows of mixtures against a kernel in C: {reason}.")
+            return []
+        *timings, scan_in_c = interleaved(*things, in_c, repeats=50)
+    rows = []
+    for (strategy, wanted), timing in zip(MIXTURES, timings, strict=True):
+        name = f"{strategy.kind} of {strategy.max_components}, a hypothesis"
+        counts = int(run(strategy, batch).hypotheses.sum()), batch.scan_count
+        rows.append(compared(name, "a scan in C", [timing, scan_in_c], counts, wanted))
+    return rows
+
+
 def particle_rows(batch: Drawn) -> list[Record]:
     """Rows of the particle filter, per scan and per particle moved and weighed."""
     few = first_trials(batch, 3)
@@ -157,7 +185,7 @@ def harness_rows(batch: Drawn) -> list[Record]:
     return [*rows, two_workers_row(STRATEGIES)]
 
 
-GROUPS = (pda_rows, strategy_rows, particle_rows, harness_rows)
+GROUPS = (pda_rows, strategy_rows, mixture_rows, particle_rows, harness_rows)
 
 
 def plain_row(name: str, timing: Timing, count: int) -> Record:
@@ -166,7 +194,7 @@ def plain_row(name: str, timing: Timing, count: int) -> Record:
 
 
 def compared(
-    name: str, against: str, times: list[Timing], counts: tuple[int, int], wanted: float
+    name: str, against: str, times: list[Timing], counts: tuple[int, int], wanted: float | None
 ) -> Record:
     """Return the row of ours and another, each timed on its own number of scans."""
     ours, theirs = times

@@ -176,6 +176,8 @@ EVERY_STRATEGY = """
     drawn = draw_scenes_of(world, np.random.default_rng(1), 2, 4, clutter_half_width=30.0)
     scans = as_scans(drawn.trials, 1)
     strategies = [nearest_neighbour(), most_probable_hypothesis(), pda(), gaussian_mixture()]
+    strategies += [pruned_mixture(), n_scan_mixture(scans_back=1)]
+    strategies.append(runnalls_mixture(max_components=3, merge_among=6))
     strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}))
     settings = {"proposal": "detections", "resampling": "stratified", "roughening": 0.1}
     strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}, **settings))

@@ -13,10 +13,13 @@ from small_worlds import (
     known_association,
     look_inside,
     most_probable_hypothesis,
+    n_scan_mixture,
     nearest_neighbour,
     particle_filter,
     pda,
+    pruned_mixture,
     run_on,
+    runnalls_mixture,
 )
 
 GAUSSIAN = {
@@ -26,6 +29,9 @@ GAUSSIAN = {
     "pda without a gate": pda(gate_probability=1.0),
     "mixture": gaussian_mixture(max_components=6),
     "mixture without a gate": gaussian_mixture(max_components=4, gate_probability=1.0),
+    "pruned mixture": pruned_mixture(max_components=6),
+    "Runnalls' mixture": runnalls_mixture(max_components=4, merge_among=12),
+    "N-scan mixture": n_scan_mixture(max_components=6, scans_back=2),
 }
 ALL = GAUSSIAN | {"particles": particle_filter(particles=64)}
 
@@ -40,7 +46,7 @@ densities = st.sampled_from([0.0, 1e-300, 1e-3, 0.1, 10.0, 1e300])
 def test_weights_are_a_distribution(scan, PD, clutter, gate_probability):
     world = constant_velocity_world(detection_probability=PD, clutter=clutter)
     scans = as_scans([[np.reshape(scan, (-1, 1))]], 1)
-    found = look_inside(world, scans, gate_probability, capacity=20)
+    found = look_inside(world, scans, gate_probability)
     weights = found.table["weight"]
     assert np.all((weights >= 0) & (weights <= 1))
     np.testing.assert_allclose(weights.sum(), 1.0, rtol=1e-14)

@@ -4,6 +4,7 @@ A mixture is a list of (weight, mean, covariance); a hypothesis adds the squared
 index of its detection (None for 'not detected').
 """
 
+import itertools
 from typing import NamedTuple
 
 import numpy as np
@@ -31,6 +32,7 @@ class Hypothesis(NamedTuple):
     covariance: np.ndarray
     distance: float
     detection: int | None
+    parent: int = 0
 
 
 def van_loan(drift, diffusion, interval):
@@ -75,13 +77,13 @@ def hypotheses_of(plain, mixture, detections, gate_probability=1.0):
     with np.errstate(divide="ignore"):
         log_missed, log_detected = np.log(1 - PD * gate_probability), np.log(PD)
         log_clutter = np.log(plain.clutter)
-        for weight, mean, covariance in mixture:
-            rows.append((mean, covariance, 0.0, None))
+        for parent, (weight, mean, covariance) in enumerate(mixture):
+            rows.append((mean, covariance, 0.0, None, parent))
             logs.append(np.log(weight) + log_missed)
             for j, detection in enumerate(detections):
                 updated = update_by_one(plain, mean, covariance, detection)
                 if updated[2] < limit:
-                    rows.append((*updated[:3], j))
+                    rows.append((*updated[:3], j, parent))
                     logs.append(np.log(weight) + log_detected + updated[3])
     logs = np.array(logs)
     explained = np.array([row[3] is not None for row in rows])
@@ -149,6 +151,70 @@ def prune_merge_cap(prune_below, merge_below, max_components):
         return [(weight / total, mean, covariance) for weight, mean, covariance in merged]
 
     return reduce
+
+
+def rescaled(parts):
+    """The parts (weight, ...) with weights that sum to one."""
+    total = sum(part[0] for part in parts)
+    return [(part[0] / total, *part[1:]) for part in parts]
+
+
+def heaviest(parts, most):
+    return sorted(parts, key=lambda part: -part[0])[:most]
+
+
+def prune_and_cap(prune_below, max_components):
+    """The heaviest of those that are not too light."""
+
+    def reduce(rows):
+        kept = [row[:3] for row in rows if row.weight >= prune_below]
+        return rescaled(heaviest(kept or [row[:3] for row in rows], max_components if kept else 1))
+
+    return reduce
+
+
+def bound_of_merging(first, second):
+    """Runnalls' bound B(i, j) of two parts (weight, mean, covariance)."""
+    parts = [first, second, (first[0] + second[0], *moments([first, second]))]
+    of_first, of_second, of_both = (part[0] * np.linalg.slogdet(part[2])[1] for part in parts)
+    return 0.5 * (of_both - of_first - of_second)
+
+
+def merge_by_bound(prune_below, merge_among, max_components):
+    """Every pair anew before every merge, the pair of least bound merged; one mode for all rows."""
+
+    def reduce(rows):
+        parts = prune_and_cap(prune_below, merge_among)(rows)
+        while len(parts) > max_components:
+            pairs = itertools.combinations(range(len(parts)), 2)
+            i, j = min(pairs, key=lambda pair: bound_of_merging(parts[pair[0]], parts[pair[1]]))
+            second, first = parts.pop(j), parts.pop(i)
+            parts.append((first[0] + second[0], *moments([first, second])))
+        return parts
+
+    return reduce
+
+
+def n_scan_mixtures(plain, scans, scans_back, prune_below, max_components, gate_probability=1.0):
+    """N-scan pruning by whole histories: for each scan, parts (weight, mean, covariance, history).
+
+    A history holds the associations of all scans so far, oldest first, None for 'not detected'.
+    """
+    mixture = [(1.0, plain.mean, plain.covariance, ())]
+    mixtures = []
+    for k, detections in enumerate(scans):
+        bare = [part[:3] for part in mixture]
+        rows = hypotheses_of(
+            plain, predict(plain, bare) if k else bare, detections, gate_probability
+        )
+        parts = [(*row[:3], (*mixture[row.parent][3], row.detection)) for row in rows]
+        best = max(parts, key=lambda part: part[0])
+        settled = max(k + 1 - scans_back, 0)  # scans that all must share
+        parts = rescaled([part for part in parts if part[3][:settled] == best[3][:settled]])
+        kept = [part for part in parts if part[0] >= prune_below] or heaviest(parts, 1)
+        mixture = rescaled(heaviest(kept, max_components))
+        mixtures.append(mixture)
+    return mixtures
 
 
 def run(plain, scans, reduce, gate_probability=1.0):

@@ -30,8 +30,11 @@ from filters.strategies import (
     KnownAssociation,
     MostProbableHypothesis,
     NearestNeighbour,
+    NScanMixture,
     ParticleFilter,
     ProbabilisticDataAssociation,
+    PrunedMixture,
+    RunnallsMixture,
 )
 from filters.strategies.strategy import Assumptions, gate_of
 from filters.track import ORIGIN_UNKNOWN, Ending, Prior, Scans, room_for_tracks
@@ -60,6 +63,18 @@ def pda(**settings):
 
 def gaussian_mixture(**settings):
     return GaussianMixture(kind="gaussian-mixture", **settings)
+
+
+def pruned_mixture(**settings):
+    return PrunedMixture(kind="pruned-mixture", **settings)
+
+
+def runnalls_mixture(**settings):
+    return RunnallsMixture(kind="runnalls-mixture", **settings)
+
+
+def n_scan_mixture(**settings):
+    return NScanMixture(kind="n-scan-mixture", **settings)
 
 
 def exact_mixture(max_components=10_000, **settings):

@@ -13,9 +13,9 @@ SPREADS = "start_position_sd_m = [8.0, 8.0]\nstart_velocity_sd_m_per_s = [1.0, 1
 REGION = "region_m = [[-400.0, 400.0], [-400.0, 400.0]]"
 PDA = 'kind = "pda"'
 KINDS = (
-    "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, unreduced-mixture, "
-    "particle-filter, "
-    "known-association"
+    "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, pruned-mixture, "
+    "runnalls-mixture, n-scan-mixture, unreduced-mixture, "
+    "particle-filter, known-association"
 )
 MOTIONS = (
     "nearly-constant-velocity, piecewise-constant-acceleration, nearly-constant-acceleration, "
@@ -47,8 +47,8 @@ CASES = {
         "37: gopsa: is unknown; did you mean gospa?",
     ),
     "a key of another kind": (
-        (PDA, PDA + "\nmax_components = 3"),
-        "26: strategies.pda.max_components = 3: is unknown here: only kind = gaussian-mixture "
+        (PDA, PDA + "\nmerge_below = 3"),
+        "26: strategies.pda.merge_below = 3: is unknown here: only kind = gaussian-mixture "
         "has it; choose that, or remove it",
     ),
     "a key of another table": (
@@ -140,6 +140,11 @@ CASES = {
     "too many components": (
         ('kind = "gaussian-mixture"', 'kind = "gaussian-mixture"\nmax_components = 20000'),
         "29: strategies.mixture.max_components = 20000: must be at most 10000; give a whole number",
+    ),
+    "pairs among too few components": (
+        (PDA, 'kind = "runnalls-mixture"\nmax_components = 30\nmerge_among = 25'),
+        "27: strategies.pda.merge_among = 25: is below max_components (30); "
+        "make it as large or larger",
     ),
     "true for a whole number": (
         ("trials = 100", "trials = true"),
