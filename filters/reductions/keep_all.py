@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import Any
 
-from filters.mixture import copy_gaussian
 from filters.reductions.reduction import Reduction
+from filters.reductions.selection import write_row
 
 
 def _keep_all(n: int) -> Callable[..., int]:
@@ -15,17 +15,8 @@ def _keep_all(n: int) -> Callable[..., int]:
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
         count = 0
         for h in range(rows):
-            row = hypotheses.table[h]
-            if row.weight > 0.0:
-                copy_gaussian(
-                    n,
-                    hypotheses.means[h],
-                    hypotheses.covariances[row.covariance],
-                    mixture.means[count],
-                    mixture.covariances[count],
-                )
-                mixture.weights[count] = row.weight
-                mixture.modes[count] = row.mode
+            if hypotheses.table[h].weight > 0.0:
+                write_row(n, hypotheses, h, mixture, count)
                 count += 1
         return count
 

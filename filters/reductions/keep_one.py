@@ -12,8 +12,9 @@ from typing import Any
 
 from filters.compiled import helper
 from filters.hypotheses import NOT_DETECTED, Hypotheses
-from filters.mixture import Mixture, copy_gaussian
+from filters.mixture import Mixture
 from filters.reductions.reduction import Reduction
+from filters.reductions.selection import write_row
 
 # One component goes in, so row 0 is its 'not detected' in every table below.
 
@@ -46,10 +47,8 @@ def _of_origin(table: Any, rows: int, origin: int) -> int:
 
 @helper
 def _keep(n: int, h: int, hypotheses: Hypotheses, mixture: Mixture) -> int:
-    spread = hypotheses.covariances[hypotheses.table[h].covariance]
-    copy_gaussian(n, hypotheses.means[h], spread, mixture.means[0], mixture.covariances[0])
+    write_row(n, hypotheses, h, mixture, 0)
     mixture.weights[0] = 1.0
-    mixture.modes[0] = hypotheses.table[h].mode
     return 1
 
 

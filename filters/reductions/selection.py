@@ -55,13 +55,19 @@ def list_heaviest(table: Any, rows: int, most: int) -> int:
 
 
 @helper
+def write_row(n: int, hypotheses: Hypotheses, h: int, mixture: Mixture, place: int) -> None:
+    """Write row h of the table as one component of the mixture."""
+    row = hypotheses.table[h]
+    spread = hypotheses.covariances[row.covariance]
+    to_mean, to_spread = mixture.means[place], mixture.covariances[place]
+    copy_gaussian(n, hypotheses.means[h], spread, to_mean, to_spread)
+    mixture.weights[place] = row.weight
+    mixture.modes[place] = row.mode
+
+
+@helper
 def write_listed(n: int, hypotheses: Hypotheses, count: int, mixture: Mixture) -> None:
     """Write the first `count` listed rows as the components of the mixture."""
-    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
     for place in range(count):
-        h = table[place].listed
-        spread = covariances[table[h].covariance]
-        copy_gaussian(n, means[h], spread, mixture.means[place], mixture.covariances[place])
-        mixture.weights[place] = table[h].weight
-        mixture.modes[place] = table[h].mode
+        write_row(n, hypotheses, hypotheses.table[place].listed, mixture, place)
     rescale(mixture.weights, count)
