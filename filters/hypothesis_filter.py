@@ -118,7 +118,7 @@ def _predict(n: int, motion: MotionModel, interval: float, component: int, room:
 
 
 @helper
-def _explain(
+def explain_scan(
     n: int, m: int, models: Models, gate: Gate, scan: Scan, count: int, is_first: bool, room: Room
 ) -> int:
     """Fill the table of hypotheses of one scan; the prior holds at the first scan as it is."""
@@ -167,7 +167,7 @@ def _estimate(n: int, choice: int, count: int, mixture: Mixture, mean: Any, spre
 
 
 @helper
-def _must_be_detected(models: Models, scan: Scan, hypotheses: Hypotheses, rows: int) -> bool:
+def must_be_detected(models: Models, scan: Scan, hypotheses: Hypotheses, rows: int) -> bool:
     """Whether the model says that the target can't be missed, wherever it is."""
     for h in range(rows):
         detected = models.detection.probability(
@@ -207,12 +207,12 @@ def _run_trial(
     empty_scans = 0
     for k in range(scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
-        rows = _explain(n, m, models, strategy.gate, scan, count, k == 0, room)
+        rows = explain_scan(n, m, models, strategy.gate, scan, count, k == 0, room)
         nothing_in_gate = rows == count
         empty_scans = empty_scans + 1 if nothing_in_gate else 0
         tracks.hypotheses[trial] += rows
         tracks.scans_run[trial] += 1
-        if nothing_in_gate and _must_be_detected(models, scan, hypotheses, rows):
+        if nothing_in_gate and must_be_detected(models, scan, hypotheses, rows):
             tracks.impossible[trial] += 1
         if scan.origin >= 0:
             tracks.own_distance[trial, k] = _distance_of(scan.origin, hypotheses, rows)

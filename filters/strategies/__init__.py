@@ -13,6 +13,7 @@ from filters.strategies.mixtures import (
     RunnallsMixture,
 )
 from filters.strategies.particles import ParticleFilter
+from filters.strategies.rao_blackwellised import RaoBlackwellisedParticleFilter
 from filters.strategies.unreduced import UnreducedMixture
 
 STRATEGIES = (
@@ -25,5 +26,6 @@ STRATEGIES = (
     NScanMixture,
     UnreducedMixture,
     ParticleFilter,
+    RaoBlackwellisedParticleFilter,
     KnownAssociation,
 )

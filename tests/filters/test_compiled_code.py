@@ -181,6 +181,7 @@ EVERY_STRATEGY = """
     strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}))
     settings = {"proposal": "detections", "resampling": "stratified", "roughening": 0.1}
     strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}, **settings))
+    strategies.append(rao_blackwellised(particles=12))
     found = [run_on(world, strategy, scans) for strategy in strategies]
     told = scans._replace(origins=drawn.origins.astype(np.int64))
     found.append(run_on(world, known_association(), told))

@@ -18,6 +18,7 @@ from small_worlds import (
     particle_filter,
     pda,
     pruned_mixture,
+    rao_blackwellised,
     run_on,
     runnalls_mixture,
 )
@@ -174,6 +175,7 @@ def test_hundreds_of_detections_and_none_keep_everything_finite(
         assert_sound(run_on(world, strategy, scans), name)
     for strategy in (ALL["particles"], particle_filter(particles=64, proposal="detections")):
         assert_sound(run_on(world, strategy, scans), "particles", positive=False)
+    assert_sound(run_on(world, rao_blackwellised(particles=8), scans), "histories")
 
 
 def test_priors_may_be_ten_million_times_vaguer_than_the_sensor():

@@ -17,6 +17,7 @@ from small_worlds import (
     nearest_neighbour,
     particle_filter,
     pda,
+    rao_blackwellised,
     run_on,
     skipping_nothing,
 )
@@ -201,9 +202,11 @@ STRATEGIES = {
     "most probable hypothesis": most_probable_hypothesis(),
     "pda": pda(),
     "mixture": gaussian_mixture(max_components=5),
+    "histories": rao_blackwellised(particles=20),
     "particles": particle_filter(particles=1000),
     "particles from detections": particle_filter(particles=200, proposal="detections"),
 }
+SAMPLING = {"histories", "particles", "particles from detections"}
 
 
 @pytest.mark.parametrize("strategy", STRATEGIES)
@@ -219,7 +222,7 @@ def test_a_target_crossing_180_degrees_is_followed_without_a_jump(strategy):
     assert np.linalg.norm(tracks.means[..., :2] - places, axis=2).max() < 30.0
 
 
-@pytest.mark.parametrize("strategy", [name for name in STRATEGIES if "particles" not in name])
+@pytest.mark.parametrize("strategy", [name for name in STRATEGIES if name not in SAMPLING])
 def test_turning_the_world_by_180_degrees_turns_the_estimates(strategy):
     """The crossing of the cut becomes one of zero degrees; estimates change their sign alone."""
     rng = np.random.default_rng(181)

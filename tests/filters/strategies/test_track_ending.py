@@ -13,6 +13,7 @@ from small_worlds import (
     nearest_neighbour,
     particle_filter,
     pda,
+    rao_blackwellised,
     run_on,
 )
 
@@ -24,6 +25,7 @@ STRATEGIES = {
     "particles from detections": lambda **keys: particle_filter(
         particles=300, proposal="detections", **keys
     ),
+    "histories": lambda **keys: rao_blackwellised(particles=20, **keys),
 }
 NEAR, FAR, NONE = [[0.0]], [[500.0]], []
 

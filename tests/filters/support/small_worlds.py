@@ -34,6 +34,7 @@ from filters.strategies import (
     ParticleFilter,
     ProbabilisticDataAssociation,
     PrunedMixture,
+    RaoBlackwellisedParticleFilter,
     RunnallsMixture,
 )
 from filters.strategies.strategy import Assumptions, gate_of
@@ -90,6 +91,10 @@ def exact_mixture(max_components=10_000, **settings):
 
 def particle_filter(**settings):
     return ParticleFilter(kind="particle-filter", **settings)
+
+
+def rao_blackwellised(**settings):
+    return RaoBlackwellisedParticleFilter(kind="rao-blackwellised-particle-filter", **settings)
 
 
 def known_association(**settings):

@@ -15,7 +15,7 @@ PDA = 'kind = "pda"'
 KINDS = (
     "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, pruned-mixture, "
     "runnalls-mixture, n-scan-mixture, unreduced-mixture, "
-    "particle-filter, known-association"
+    "particle-filter, rao-blackwellised-particle-filter, known-association"
 )
 MOTIONS = (
     "nearly-constant-velocity, piecewise-constant-acceleration, nearly-constant-acceleration, "

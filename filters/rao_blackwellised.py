@@ -1,0 +1,229 @@
+"""The Rao-Blackwellised particle filter: associations are sampled, states are not.
+
+A particle is a history of associations with the Kalman filter that it leads to. A scan gives it
+M + 1 hypotheses, as in update; it takes one in proportion to their weights, which is the optimal
+proposal, and its own weight is multiplied by their sum. So the posterior is a Gaussian mixture, and
+the sum over particles is an unbiased estimate of the evidence. The estimate of a scan is taken from
+the hypotheses of all particles, before any is sampled.
+
+Source: Särkkä, Vehtari and Lampinen (2007), Information Fusion 8, Rao-Blackwellized particle filter
+for multiple target tracking, here for one target.
+"""
+
+from __future__ import annotations
+
+import functools
+import math
+from collections.abc import Callable
+from typing import Any, NamedTuple
+
+import numpy as np
+
+from filters.compiled import helper, kernel
+from filters.hypotheses import Hypotheses
+from filters.hypothesis_filter import Room, explain_scan, must_be_detected
+from filters.mixture import (
+    Mixture,
+    add_to_covariance,
+    add_to_mean,
+    clear_moments,
+    copy_gaussian,
+    forget_history,
+    mirror,
+)
+from filters.models.contract import Models
+from filters.particles.resampling import are_uneven, choose_sources
+from filters.posteriors import keep_mixture
+from filters.random_numbers import STRATEGY, Numbers, open_at, uniform
+from filters.track import (
+    Ending,
+    Prior,
+    Scans,
+    Tracks,
+    clear_estimate,
+    past_limit,
+    scan_of,
+)
+from filters.update import Gate
+
+
+class RaoBlackwellisedStrategy(NamedTuple):
+    """Settings of a Rao-Blackwellised particle filter."""
+
+    resample_below: float  # effective number of samples, a share of all
+    resampling: int  # SYSTEMATIC or STRATIFIED, see resampling
+    gate: Gate
+    ending: Ending
+
+
+class Sampling(NamedTuple):
+    """Working memory beside that of the hypotheses."""
+
+    chosen: Any  # (particles,) int64: row of each in the table of hypotheses
+    sources: Any  # (particles,) int64, see resampling
+    log_evidence: Any  # (1,) ln of the product over a trial's scans of the summed hypotheses
+
+
+def room_for_sampling(particles: int) -> Sampling:
+    """Working memory for a number of particles."""
+    return Sampling(np.empty(particles, np.int64), np.empty(particles, np.int64), np.empty(1))
+
+
+@helper
+def _start(n: int, mean: Any, covariance: Any, mixture: Mixture) -> None:
+    """Let every particle begin with the prior."""
+    particles = mixture.weights.shape[0]
+    for i in range(particles):
+        mixture.weights[i] = 1.0 / particles
+        mixture.modes[i] = 0
+        copy_gaussian(n, mean, covariance, mixture.means[i], mixture.covariances[i])
+        forget_history(mixture.histories[i])
+
+
+@helper
+def _moments(n: int, hypotheses: Hypotheses, rows: int, mean: Any, covariance: Any) -> None:
+    """Write mean (n,) and covariance (n, n) of all hypotheses together."""
+    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
+    clear_moments(n, mean, covariance)
+    for h in range(rows):
+        add_to_mean(n, table[h].weight, means[h], mean)
+    for h in range(rows):
+        spread = covariances[table[h].covariance]
+        add_to_covariance(n, table[h].weight, means[h], spread, mean, covariance)
+    mirror(n, covariance)
+
+
+@helper
+def _sample_associations(
+    hypotheses: Hypotheses, rows: int, numbers: Numbers, weights: Any, chosen: Any
+) -> None:
+    """Choose a hypothesis for each particle, by one uniform number each, and weigh the particles.
+
+    The rows of a particle stand together, in the order of the particles.
+    weights (particles,) written; chosen (particles,) rows of the table
+    """
+    table = hypotheses.table
+    end = 0
+    for i in range(weights.shape[0]):
+        first = end
+        weights[i] = 0.0
+        while end < rows and table[end].parent == i:
+            weights[i] += table[end].weight
+            end += 1
+        left = uniform(numbers) * weights[i]
+        chosen[i] = first
+        for h in range(first, end):
+            if table[h].weight > 0.0:
+                chosen[i] = h
+                left -= table[h].weight
+                if left < 0.0:
+                    break
+
+
+@helper
+def _become(n: int, hypotheses: Hypotheses, row: int, i: int, mixture: Mixture) -> None:
+    """Let a particle be one hypothesis."""
+    spread = hypotheses.covariances[hypotheses.table[row].covariance]
+    copy_gaussian(n, hypotheses.means[row], spread, mixture.means[i], mixture.covariances[i])
+    mixture.modes[i] = hypotheses.table[row].mode
+
+
+@helper
+def _log_evidence(table: Any, rows: int) -> float:
+    """ln of the sum of the hypotheses' weights before they were normalised."""
+    for h in range(rows):
+        if table[h].weight > 0.0:
+            return table[h].log_weight - math.log(table[h].weight)
+    return -math.inf
+
+
+@helper
+def _run_trial(
+    n: int,
+    m: int,
+    models: Models,
+    strategy: RaoBlackwellisedStrategy,
+    prior: Prior,
+    scans: Scans,
+    trial: int,
+    first_trial: int,
+    numbers: Numbers,
+    tracks: Tracks,
+    room: Room,
+    sampling: Sampling,
+) -> None:
+    """Follow the target through one trial.
+
+    A scan's random numbers are in this order: one of each particle's association; those of
+    resampling.
+    """
+    mixture, hypotheses = room.mixture, room.hypotheses
+    particles = mixture.weights.shape[0]
+    mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
+    _start(n, mean, prior.covariance, mixture)
+    sampling.log_evidence[0] = 0.0
+    empty_scans = 0
+    for k in range(scans.intervals.shape[0]):
+        scan = scan_of(scans, models.sensor.sites, trial, k)
+        open_at(numbers, first_trial + trial, STRATEGY, k)
+        rows = explain_scan(n, m, models, strategy.gate, scan, particles, k == 0, room)
+        nothing_in_gate = rows == particles
+        empty_scans = empty_scans + 1 if nothing_in_gate else 0
+        tracks.hypotheses[trial] += rows
+        tracks.scans_run[trial] += 1
+        if nothing_in_gate and must_be_detected(models, scan, hypotheses, rows):
+            tracks.impossible[trial] += 1
+            sampling.log_evidence[0] = -math.inf
+        sampling.log_evidence[0] += _log_evidence(hypotheses.table, rows)
+
+        estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
+        _moments(n, hypotheses, rows, estimate, spread)
+        if past_limit(strategy.ending, empty_scans, spread):
+            clear_estimate(n, estimate, spread)
+            return
+        tracks.present[trial, k] = True
+
+        _sample_associations(hypotheses, rows, numbers, mixture.weights, sampling.chosen)
+        for i in range(particles):
+            _become(n, hypotheses, sampling.chosen[i], i, mixture)
+        keep_mixture(n, mixture, particles, trial, k, tracks.posteriors)
+        if are_uneven(mixture.weights, strategy.resample_below):
+            choose_sources(mixture.weights, strategy.resampling, numbers, sampling.sources)
+            for i in range(particles):
+                _become(n, hypotheses, sampling.chosen[sampling.sources[i]], i, mixture)
+                mixture.weights[i] = 1.0 / particles
+
+
+@functools.cache
+def compiled_rao_blackwellised_filter(n: int, m: int) -> Callable[..., None]:
+    """Return the kernel for states of n and measurements of m numbers."""
+
+    @kernel
+    def run_rao_blackwellised_filter(
+        models: Models,
+        strategy: RaoBlackwellisedStrategy,
+        prior: Prior,
+        scans: Scans,
+        first_trial: int,
+        numbers: Numbers,
+        tracks: Tracks,
+        room: Room,
+        sampling: Sampling,
+    ) -> None:
+        for trial in range(scans.offsets.shape[0]):
+            _run_trial(
+                n,
+                m,
+                models,
+                strategy,
+                prior,
+                scans,
+                trial,
+                first_trial,
+                numbers,
+                tracks,
+                room,
+                sampling,
+            )
+
+    return run_rao_blackwellised_filter

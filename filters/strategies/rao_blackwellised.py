@@ -1,0 +1,74 @@
+"""The Rao-Blackwellised particle filter as a strategy."""
+
+from __future__ import annotations
+
+from typing import Annotated, Literal
+
+from pydantic import Field
+
+from filters.hypothesis_filter import room_for
+from filters.posteriors import NOT_ASKED, room_for_posteriors
+from filters.random_numbers import Numbers
+from filters.rao_blackwellised import (
+    RaoBlackwellisedStrategy,
+    compiled_rao_blackwellised_filter,
+    room_for_sampling,
+)
+from filters.reductions.keep_all import keep_all
+from filters.reductions.reduction import Reduction
+from filters.strategies.gaussian import GatedStrategy
+from filters.strategies.particles import RESAMPLINGS, ParticleCount, Share
+from filters.strategies.strategy import Assumptions
+from filters.track import Scans, Tracks, room_for_tracks
+
+
+class RaoBlackwellisedParticleFilter(GatedStrategy):
+    """Samples associations; each particle is a history of them with a Kalman filter of its own."""
+
+    kind: Literal["rao-blackwellised-particle-filter"]
+    """Which strategy: Rao-Blackwellised particle filter."""
+    particles: Annotated[ParticleCount, Field(le=1_000_000)] = 100
+    """Number of histories of associations."""
+    resample_below: Share = 0.5
+    """Resample when the effective number of samples falls below this share of `particles`."""
+    resampling: Literal["systematic", "stratified"] = "systematic"
+    """How copies are chosen when resampling: one random number for all, or one for each."""
+
+    def reduction(self) -> Reduction:
+        """None: a scan leaves as many components as it found, each a particle."""
+        return keep_all(self.particles)
+
+    def run(
+        self,
+        assumptions: Assumptions,
+        scans: Scans,
+        numbers: Numbers,
+        first_trial: int,
+        record: bool = False,
+    ) -> Tracks:
+        """Follow the target through a batch of trials."""
+        n = len(assumptions.prior.mean)
+        m = scans.detections.shape[1]
+        settings = RaoBlackwellisedStrategy(
+            self.resample_below,
+            RESAMPLINGS[self.resampling],
+            self.gate(m),
+            self.ends.rule(assumptions.axes),
+        )
+        posteriors = NOT_ASKED
+        if record:
+            trials, length = scans.origins.shape
+            posteriors = room_for_posteriors(trials, length, n, trials * length * self.particles)
+        tracks = room_for_tracks(scans, n, posteriors)
+        compiled_rao_blackwellised_filter(n, m)(
+            assumptions.models,
+            settings,
+            assumptions.prior,
+            scans,
+            first_trial,
+            numbers,
+            tracks,
+            room_for(n, m, self.reduction(), scans.most_detections),
+            room_for_sampling(self.particles),
+        )
+        return tracks
