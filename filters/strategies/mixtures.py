@@ -60,12 +60,12 @@ class RunnallsMixture(MixtureStrategy):
 
     kind: Literal["runnalls-mixture"]
     """Which strategy: Gaussian mixture, merged by Runnalls' bound."""
-    merge_among: Annotated[Count, Field(le=10_000)] = 40
-    """Most components that are compared pair by pair, the heaviest; at least max_components."""
+    merge_among: Annotated[Count, Field(le=20_000)] | None = None
+    """Most components compared pair by pair, the heaviest; by default 20 more than are kept."""
 
     @model_validator(mode="after")
     def _merges_among_enough(self) -> Self:
-        if self.merge_among < self.max_components:
+        if self.merge_among is not None and self.merge_among < self.max_components:
             raise BadValue(
                 "merge_among",
                 f"is below max_components ({self.max_components})",
@@ -75,7 +75,8 @@ class RunnallsMixture(MixtureStrategy):
 
     def reduction(self) -> Reduction:
         """Prune, merge by the least bound."""
-        return merge_by_bound(self.prune_below, self.merge_among, self.max_components)
+        merge_among = self.merge_among or self.max_components + 20
+        return merge_by_bound(self.prune_below, merge_among, self.max_components)
 
 
 class NScanMixture(MixtureStrategy):

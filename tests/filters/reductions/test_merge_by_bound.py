@@ -127,17 +127,13 @@ def test_the_pair_of_least_bound_merges_first():
         np.testing.assert_allclose(found, bound, atol=5e-7)
 
 
-@settings(derandomize=True, deadline=None, max_examples=80)
-@given(
-    st.integers(0, 2**32 - 1),
-    st.integers(1, 16),
-    st.sampled_from([0.0, 1e-3, 0.03, 0.95]),
-    st.integers(1, 12),
-    st.integers(0, 8),
-)
-def test_the_mixture_left_is_that_of_brute_force(seed, count, prune_below, most, more):
+@pytest.mark.parametrize("prune_below", [0.0, 1e-3, 0.01, 0.95])
+@pytest.mark.parametrize("seed", range(12))
+def test_the_mixture_left_is_that_of_brute_force(seed, prune_below):
     """Every pair anew before every merge; the twin's order of components differs."""
-    rows = random_rows(np.random.default_rng(seed), count)
+    rng = np.random.default_rng(seed)
+    rows = random_rows(rng, int(rng.integers(1, 20)))
+    most, more = int(rng.integers(1, 5)), int(rng.integers(0, 16))
     left = reduce_rows(merge_by_bound(prune_below, most + more, most), rows)
     expected = plain_merge_by_bound(prune_below, most + more, most)(rows)
     assert len(left.components) == len(expected)
@@ -145,6 +141,18 @@ def test_the_mixture_left_is_that_of_brute_force(seed, count, prune_below, most,
     for found, part in zip(*by_weight, strict=True):
         for number, wanted in zip(found, part, strict=True):
             np.testing.assert_allclose(number, wanted, rtol=1e-10, atol=1e-11)
+
+
+def test_what_was_merged_may_be_the_best_partner_of_one_that_had_another():
+    """Far apart the bound grows with the logarithm of the spread, so a broad one takes in more.
+
+    The first two are closest; after them the last costs less with both than with the third, which
+    is nearer to it than either.
+    """
+    rows = on_a_line((0.25, 0, 1), (0.25, 1000, 1), (0.25, 3150, 1), (0.25, 2100, 1))
+    left = reduce_rows(merge_by_bound(0.0, 4, 2), rows)
+    assert [part[0] for part in left.components] == [0.75, 0.25]
+    assert left.components[1][1][0] == 3150
 
 
 @settings(derandomize=True, deadline=None, max_examples=40)
@@ -223,12 +231,12 @@ def test_a_run_of_scans_is_that_of_the_definition():
 
 
 def test_merging_few_components_comes_closer_to_the_posterior_than_dropping_the_others():
-    """Means of 200 trials, three components each, against 200 components; paired, seed fixed.
+    """Means of 40 trials, three components each, against 200 components.
 
-    The mean squared gap was below a hundredth of pruning's for each of twelve seeds.
+    The mean squared gap was below a hundredth of pruning's in 200 trials of each of twelve seeds.
     """
     world = constant_velocity_world(1, clutter=0.1)
-    drawn = draw_scenes_of(world, np.random.default_rng(61), 200, 6, clutter_half_width=5.0)
+    drawn = draw_scenes_of(world, np.random.default_rng(61), 40, 6, clutter_half_width=5.0)
     scans = as_scans(drawn.trials, 1)
     reference = run_on(world, pruned_mixture(max_components=200, prune_below=0.0), scans).means
     merged = run_on(world, runnalls_mixture(max_components=3, prune_below=0.0), scans).means

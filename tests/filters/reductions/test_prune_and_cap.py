@@ -57,7 +57,7 @@ def test_pruning_never_leaves_nothing():
 def test_a_run_of_scans_is_that_of_the_mixture_that_merges_nothing(estimate):
     """Pruned alike, capped alike, merged below a squared distance of zero."""
     world = constant_velocity_world(2, clutter=0.05)
-    drawn = draw_scenes_of(world, np.random.default_rng(6), 10, 12, clutter_half_width=6.0)
+    drawn = draw_scenes_of(world, np.random.default_rng(6), 5, 8, clutter_half_width=6.0)
     scans = as_scans(drawn.trials, 2)
     keys = {"max_components": 7, "prune_below": 1e-3, "estimate": estimate}
     found = run_on(world, pruned_mixture(**keys), scans)
