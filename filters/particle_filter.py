@@ -21,6 +21,7 @@ from filters.particles.proposal import propose, start_from
 from filters.particles.resampling import are_uneven, choose_sources
 from filters.particles.roughening import roughen
 from filters.particles.weighing import measure_particles, weigh_by_scan
+from filters.posteriors import keep_samples
 from filters.random_numbers import STRATEGY, Numbers, open_at
 from filters.track import (
     Ending,
@@ -87,6 +88,7 @@ def _run_trial(
             clear_estimate(n, mean, spread)
             return
         tracks.present[trial, k] = True
+        keep_samples(n, cloud.weights, cloud.states, trial, k, tracks.posteriors)
         if are_uneven(cloud.weights, strategy.resample_below):
             choose_sources(cloud.weights, strategy.resampling, numbers, cloud.sources)
             copy_from_sources(n, cloud)

@@ -70,3 +70,19 @@ def keep_mixture(
                 posteriors.covariances[first + i, row, column] = mixture.covariances[i, row, column]
     posteriors.counts[trial, k] = count
     posteriors.used[0] += count
+
+
+@helper
+def keep_samples(
+    n: int, weights: Any, states: Any, trial: int, k: int, posteriors: Posteriors
+) -> None:
+    """Append weighted samples (count,) and (count, n) as the posterior of a scan, if asked for."""
+    if posteriors.counts.shape[0] == 0:
+        return
+    first, count = posteriors.used[0], weights.shape[0]
+    for i in range(count):
+        posteriors.weights[first + i] = weights[i]
+        for row in range(n):
+            posteriors.means[first + i, row] = states[i, row]
+    posteriors.counts[trial, k] = count
+    posteriors.used[0] += count

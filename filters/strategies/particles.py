@@ -10,6 +10,7 @@ from filters.models.record import NonNegative
 from filters.particle_filter import ParticleStrategy, compiled_particle_filter
 from filters.particles.cloud import DETECTIONS, MOTION, cloud_for
 from filters.particles.resampling import STRATIFIED, SYSTEMATIC
+from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
@@ -42,6 +43,7 @@ class ParticleFilter(Strategy):
     """Only for ending the track after empty scans: the filter itself has no gate."""
 
     counts_hypotheses: ClassVar[bool] = False
+    has_posteriors: ClassVar[bool] = True
 
     def run(
         self,
@@ -61,7 +63,12 @@ class ParticleFilter(Strategy):
             gate_of(self.gate_probability, m),
             self.ends.rule(assumptions.axes),
         )
-        tracks = room_for_tracks(scans, n)
+        posteriors = NOT_ASKED
+        if record:
+            trials, length = scans.origins.shape
+            most = self.particles * scans.origins.size
+            posteriors = room_for_posteriors(trials, length, n, most, samples=True)
+        tracks = room_for_tracks(scans, n, posteriors)
         compiled_particle_filter(n, m, PROPOSALS[self.proposal])(
             assumptions.models,
             settings,

@@ -103,7 +103,9 @@ def _are_sound(recorded: Posteriors, part: np.ndarray) -> bool:
     if len(recorded.covariances):
         covariances = recorded.covariances[part]
     else:
-        covariances = np.atleast_2d(np.cov(means.T, aweights=recorded.weights[part]))[np.newaxis]
+        weights = recorded.weights[part]
+        offsets = means - weights @ means
+        covariances = (weights * offsets.T) @ offsets
     try:
         return bool(np.isfinite(np.linalg.cholesky(covariances)).all())
     except np.linalg.LinAlgError:
