@@ -10,10 +10,13 @@ from filters.random_numbers import (
     DETECTION,
     MOTION,
     NOISE,
+    POSTERIOR_GAP,
+    REGION_LEVEL,
     START,
     STRATEGY,
     exponential,
     fill_normals,
+    generator_at,
     numbers_of,
     open_at,
     uniform,
@@ -165,3 +168,9 @@ def test_normal_numbers_leave_what_lies_behind_their_count_alone():
     out = np.full((1, 4), 7.0)
     draw_normals(numbers_of(1), 0, NOISE, 0, 3, out)
     assert out[0, 3] == 7.0
+
+
+@pytest.mark.parametrize("purpose", [REGION_LEVEL, POSTERIOR_GAP])
+def test_numpys_generator_at_a_place_draws_the_numbers_of_that_place(purpose):
+    ours = uniforms(numbers_of(77), 12, purpose, 0, 50)
+    assert np.array_equal(generator_at(numbers_of(77), 12, purpose).random(50), ours)

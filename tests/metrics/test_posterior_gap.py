@@ -5,13 +5,16 @@ from scipy.stats import norm
 
 import metrics.posterior_gap as module
 from metrics.gaussian_mixtures import gaussian_mixtures, log_density
+from metrics.kernel_density import kernel_mixtures
 from metrics.posterior_gap import (
+    divergence_at,
     gap_of_overlaps,
     grid_kullback_leibler,
     grid_squared_error,
     kullback_leibler,
     log_overlap,
     normalised_squared_error,
+    reference_draws,
 )
 
 
@@ -230,3 +233,39 @@ def test_mixtures_that_do_not_match_and_too_few_draws_are_refused():
         kullback_leibler(one, two, 10, np.random.default_rng(0))
     with pytest.raises(ValueError, match="draws must be at least 2, got 1"):
         kullback_leibler(one, one, 1, np.random.default_rng(0))
+
+
+@pytest.fixture
+def clouds():
+    """Two scans of 30 weighted samples of four numbers, and mixtures of three components."""
+    rng = np.random.default_rng(4)
+    weights = rng.dirichlet(np.ones(30), 2)
+    kernels = kernel_mixtures(weights, rng.normal(size=(2, 30, 4)))
+    spreads = np.eye(4) + 0.3 * rng.normal(size=(2, 3, 4, 4)) ** 2
+    mixtures = gaussian_mixtures(
+        rng.dirichlet(np.ones(3), 2), rng.normal(size=(2, 3, 4)), spreads @ spreads.mT
+    )
+    return mixtures, kernels
+
+
+def test_overlaps_with_kernels_are_those_of_any_components(clouds):
+    mixtures, kernels = clouds
+    plain = gaussian_mixtures(kernels.weights, kernels.means, kernels.covariances.copy())
+    for first, second, expected in (
+        (mixtures, kernels, log_overlap(mixtures, plain)),
+        (kernels, mixtures, log_overlap(plain, mixtures)),
+        (kernels, kernels, log_overlap(plain, plain)),
+    ):
+        np.testing.assert_allclose(log_overlap(first, second), expected, rtol=1e-12)
+
+
+def test_draws_taken_once_give_every_other_the_divergence_of_draws_of_its_own(clouds):
+    mixtures, kernels = clouds
+    drawn = reference_draws(mixtures, 40, np.random.default_rng(9))
+    for other in (kernels, mixtures):
+        alone = kullback_leibler(mixtures, other, 40, np.random.default_rng(9))
+        shared = divergence_at(drawn, other)
+        np.testing.assert_array_equal(shared.estimate, alone.estimate)
+        np.testing.assert_array_equal(shared.standard_error, alone.standard_error)
+    with pytest.raises(ValueError, match=r"got draws \(2, 40, 4\) and means"):
+        divergence_at(drawn, mixtures.at((0,)))

@@ -2,7 +2,7 @@ import numpy as np
 import pytest
 from scipy.stats import binomtest
 
-from metrics.scan_rates import scan_rate
+from metrics.scan_rates import rate_of_counts, scan_rate
 
 
 def test_one_scan_a_trial_gives_the_interval_of_clopper_and_pearson():
@@ -71,3 +71,12 @@ def test_arrays_that_do_not_fit_are_refused():
         scan_rate(np.ones((3, 2), bool), np.ones((3, 1), bool))
     with pytest.raises(ValueError, match="must be a bool array"):
         scan_rate(np.ones((3, 2)), np.ones((3, 2), bool))
+
+
+def test_counts_by_trial_say_what_their_scans_say():
+    rng = np.random.default_rng(3)
+    hits, counted = rng.random((40, 7)) < 0.4, rng.random((40, 7)) < 0.8
+    of_counts = rate_of_counts((hits & counted).sum(axis=1), counted.sum(axis=1))
+    assert of_counts == scan_rate(hits, counted)
+    with pytest.raises(ValueError, match="hits from 0 to scans"):
+        rate_of_counts([3, 1], [2, 2])

@@ -92,7 +92,7 @@ def coverage_of_regions(results: Results) -> Figure:
     low = -most
     high = min(most, 1.2 * max([*(end for end in ends if math.isfinite(end)), 5.0]))
     y_scale = Scale(False, low, high, "coverage less level [%]")
-    x_scale = Scale(False, 0.0, 100.0, "level [%]")
+    x_scale = Scale(False, 0.0, 100.0, "level [%]", (25.0, 50.0, 75.0), ("25", "50", "75"))
     for place, (axes, panel) in enumerate(zip(page.panels, panels, strict=True)):
         apply_x(axes, x_scale, labelled=page.is_bottom(place))
         apply_y(axes, y_scale, labelled=page.is_left(place))

@@ -57,12 +57,10 @@ def _title(results: Results, told: list[Told]) -> str:
     hardest = max(shown, key=lambda cases: float(cases[metric].max()))
     cases = sorted(hardest.to_dict("records"), key=lambda case: case[metric])
     far, near = cases[-1], cases[0]
-    text = (
-        f"{far[STRATEGY]}'s posterior is {case_in_words(METRICS[metric], far, metric)} from "
-        f"{reference}'s"
-    )
+    text = f"The posterior of {far[STRATEGY]} is {case_in_words(METRICS[metric], far, metric)} from"
+    text += f" that of {reference}"
     if len(cases) > 1:
-        text += f", {near[STRATEGY]}'s {case_in_words(METRICS[metric], near, metric)}"
+        text += f", that of {near[STRATEGY]} {case_in_words(METRICS[metric], near, metric)}"
     return f"{text}, where it is farthest" if len(shown) > 1 else text
 
 
