@@ -147,11 +147,9 @@ def reference_draws(
         raise ValueError(f"draws must be at least 2, got {draws}")
     exist = ~np.isnan(reference.exist)
     points = np.full((*exist.shape, draws, reference.means.shape[-1]), np.nan)
-    densities = np.full((*exist.shape, draws), np.nan)
     for place in map(tuple, np.argwhere(exist)):
         points[place] = draw(reference.at(place), draws, rng)
-        densities[place] = log_density(reference.at(place), points[place])
-    return ReferenceDraws(points, densities)
+    return ReferenceDraws(points, log_density(reference, points))
 
 
 def divergence_at(drawn: ReferenceDraws, other: GaussianMixtures) -> Divergence:

@@ -83,6 +83,7 @@ def posterior_row(case: CaseScores, rules: ScoringRules) -> Row:
     if rules.posterior_gap is not None:
         gaps = scores.gaps
         row |= _mean_with_interval("posterior_gap_ise", scores.gap_ise[counted], gaps[counted])
+        row["posterior_gap_ise_low"] = float(np.maximum(0.0, row["posterior_gap_ise_low"]))
         row |= _mean_with_interval("posterior_gap_kl", scores.gap_kl[held], gaps[held])
     return row
 

@@ -45,6 +45,8 @@ def finding(results: Results, metric: str) -> str:
     """One sentence, without its full stop, on a metric over all conditions of the results."""
     quantity = metric_quantity(results, metric)
     rows = results.summary[results.summary[STRATEGY].isin(rivals(results))]
+    if metric.startswith("posterior_gap_"):  # the reference is no way from itself
+        rows = rows[rows[STRATEGY] != results.document["posterior_gap"]["reference"]]
     if rows[metric].isna().all():
         why = "No trial held track" if quantity.held else "Nothing was counted"
         return f"{why}: there is no {quantity.name}"
