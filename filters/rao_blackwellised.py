@@ -35,6 +35,7 @@ from filters.models.contract import Models
 from filters.particles.resampling import are_uneven, choose_sources
 from filters.posteriors import keep_mixture
 from filters.random_numbers import STRATEGY, Numbers, open_at, uniform
+from filters.reductions.selection import write_row
 from filters.track import (
     Ending,
     Prior,
@@ -59,6 +60,7 @@ class RaoBlackwellisedStrategy(NamedTuple):
 class Sampling(NamedTuple):
     """Working memory beside that of the hypotheses."""
 
+    weights: Any  # (particles,) after a scan, summing to one
     chosen: Any  # (particles,) int64: row of each in the table of hypotheses
     sources: Any  # (particles,) int64, see resampling
     log_evidence: Any  # (1,) ln of the product over a trial's scans of the summed hypotheses
@@ -66,7 +68,12 @@ class Sampling(NamedTuple):
 
 def room_for_sampling(particles: int) -> Sampling:
     """Working memory for a number of particles."""
-    return Sampling(np.empty(particles, np.int64), np.empty(particles, np.int64), np.empty(1))
+    return Sampling(
+        np.empty(particles),
+        np.empty(particles, np.int64),
+        np.empty(particles, np.int64),
+        np.empty(1),
+    )
 
 
 @helper
@@ -95,14 +102,13 @@ def _moments(n: int, hypotheses: Hypotheses, rows: int, mean: Any, covariance: A
 
 @helper
 def _sample_associations(
-    hypotheses: Hypotheses, rows: int, numbers: Numbers, weights: Any, chosen: Any
+    hypotheses: Hypotheses, rows: int, numbers: Numbers, sampling: Sampling
 ) -> None:
     """Choose a hypothesis for each particle, by one uniform number each, and weigh the particles.
 
     The rows of a particle stand together, in the order of the particles.
-    weights (particles,) written; chosen (particles,) rows of the table
     """
-    table = hypotheses.table
+    table, weights, chosen = hypotheses.table, sampling.weights, sampling.chosen
     end = 0
     for i in range(weights.shape[0]):
         first = end
@@ -118,14 +124,6 @@ def _sample_associations(
                 left -= table[h].weight
                 if left < 0.0:
                     break
-
-
-@helper
-def _become(n: int, hypotheses: Hypotheses, row: int, i: int, mixture: Mixture) -> None:
-    """Let a particle be one hypothesis."""
-    spread = hypotheses.covariances[hypotheses.table[row].covariance]
-    copy_gaussian(n, hypotheses.means[row], spread, mixture.means[i], mixture.covariances[i])
-    mixture.modes[i] = hypotheses.table[row].mode
 
 
 @helper
@@ -183,14 +181,15 @@ def _run_trial(
             return
         tracks.present[trial, k] = True
 
-        _sample_associations(hypotheses, rows, numbers, mixture.weights, sampling.chosen)
+        _sample_associations(hypotheses, rows, numbers, sampling)
         for i in range(particles):
-            _become(n, hypotheses, sampling.chosen[i], i, mixture)
+            write_row(n, hypotheses, sampling.chosen[i], mixture, i)
+            mixture.weights[i] = sampling.weights[i]
         keep_mixture(n, mixture, particles, trial, k, tracks.posteriors)
         if are_uneven(mixture.weights, strategy.resample_below):
             choose_sources(mixture.weights, strategy.resampling, numbers, sampling.sources)
             for i in range(particles):
-                _become(n, hypotheses, sampling.chosen[sampling.sources[i]], i, mixture)
+                write_row(n, hypotheses, sampling.chosen[sampling.sources[i]], mixture, i)
                 mixture.weights[i] = 1.0 / particles
 
 

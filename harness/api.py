@@ -22,6 +22,7 @@ from harness.report.tables.overall import overall_table
 from harness.report.tables.table import Table
 from harness.report.tables.text import as_text
 from harness.study.json_schema import study_json_schema
+from harness.study.memory import check_memory
 from harness.study.own_sensors import find_own_files, own_sensors, try_own_sensors
 from harness.study.study import Study, load_study
 from harness.trials.driver import Progress, SetAside
@@ -74,6 +75,7 @@ def run_study(
     raises      OSError: the disk is full or can't be written; what was stored stays
     """
     study = study if isinstance(study, Study) else load_study(study)
+    check_memory(study)
     try_own_sensors(study)
     folder = results_folder(study, into)
     claim_folder(folder, study.name)
@@ -101,6 +103,7 @@ def check_study(path: str | Path, tell: Callable[[str], None] = lambda words: No
     """
     study = load_study(path)
     find_own_files(study)
+    check_memory(study)
     if own_sensors(study):
         return outlook_text(Outlook(study, (), ()))
     with telling_if_slow(_telling(tell)):

@@ -2,20 +2,21 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field
 
 from filters.models.record import NonNegative
 from filters.particle_filter import ParticleStrategy, compiled_particle_filter
-from filters.particles.cloud import DETECTIONS, MOTION, cloud_for
+from filters.particles.cloud import DETECTIONS, MOTION, bytes_per_particle, cloud_for
 from filters.particles.resampling import STRATIFIED, SYSTEMATIC
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
 
-ParticleCount = Annotated[int, Field(strict=True, ge=2, le=10_000_000)]
+ParticleCount = Annotated[int, Field(strict=True, ge=2, le=1_000_000_000)]
 Share = Annotated[float, Field(strict=True, allow_inf_nan=False, ge=0.0, le=1.0)]
 PROPOSALS = {"motion": MOTION, "detections": DETECTIONS}
 RESAMPLINGS = {"systematic": SYSTEMATIC, "stratified": STRATIFIED}
@@ -44,6 +45,14 @@ class ParticleFilter(Strategy):
 
     counts_hypotheses: ClassVar[bool] = False
     has_posteriors: ClassVar[bool] = True
+
+    def kernel_choice(self) -> tuple[object, ...]:
+        """The proposal."""
+        return (self.proposal,)
+
+    def memory_asked(self, n: int, m: int) -> Iterable[tuple[str, int, int]]:
+        """The cloud."""
+        return [("particles", self.particles, bytes_per_particle(n, m))]
 
     def run(
         self,

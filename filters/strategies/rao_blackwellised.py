@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal
-
-from pydantic import Field
+from collections.abc import Iterable
+from typing import Literal
 
 from filters.hypothesis_filter import room_for
 from filters.posteriors import NOT_ASKED, room_for_posteriors
@@ -20,6 +19,7 @@ from filters.strategies.gaussian import GatedStrategy
 from filters.strategies.particles import RESAMPLINGS, ParticleCount, Share
 from filters.strategies.strategy import Assumptions
 from filters.track import Scans, Tracks, room_for_tracks
+from filters.unreduced import bytes_a_component
 
 
 class RaoBlackwellisedParticleFilter(GatedStrategy):
@@ -27,7 +27,7 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
 
     kind: Literal["rao-blackwellised-particle-filter"]
     """Which strategy: Rao-Blackwellised particle filter."""
-    particles: Annotated[ParticleCount, Field(le=1_000_000)] = 100
+    particles: ParticleCount = 100
     """Number of histories of associations."""
     resample_below: Share = 0.5
     """Resample when the effective number of samples falls below this share of `particles`."""
@@ -37,6 +37,10 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
     def reduction(self) -> Reduction:
         """None: a scan leaves as many components as it found, each a particle."""
         return keep_all(self.particles)
+
+    def memory_asked(self, n: int, m: int) -> Iterable[tuple[str, int, int]]:
+        """Components and hypotheses, with one detection a scan: the least that it comes to."""
+        return [("particles", self.particles, bytes_a_component(n, 1))]
 
     def run(
         self,
@@ -55,10 +59,12 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
             self.gate(m),
             self.ends.rule(assumptions.axes),
         )
+        reduction = self.reduction()
         posteriors = NOT_ASKED
         if record:
             trials, length = scans.origins.shape
-            posteriors = room_for_posteriors(trials, length, n, trials * length * self.particles)
+            most = self.most_recorded(scans, reduction)
+            posteriors = room_for_posteriors(trials, length, n, most)
         tracks = room_for_tracks(scans, n, posteriors)
         compiled_rao_blackwellised_filter(n, m)(
             assumptions.models,
@@ -68,7 +74,7 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
             first_trial,
             numbers,
             tracks,
-            room_for(n, m, self.reduction(), scans.most_detections),
+            room_for(n, m, reduction, scans.most_detections),
             room_for_sampling(self.particles),
         )
         return tracks

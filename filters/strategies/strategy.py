@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 from typing import Annotated, Any, ClassVar, NamedTuple
 
 from pydantic import Field
@@ -58,6 +59,17 @@ class Strategy(Record):
     counts_hypotheses: ClassVar[bool] = True
     # Whether it can keep the posteriors of every scan.
     has_posteriors: ClassVar[bool] = False
+
+    def kernel_choice(self) -> tuple[object, ...]:
+        """Settings that decide which code is compiled, beside the kind."""
+        return ()
+
+    def memory_asked(self, n: int, m: int) -> Iterable[tuple[str, int, int]]:
+        """Settings that ask for much working memory: key, number, and bytes of each.
+
+        n, m    numbers in the state and in a measurement
+        """
+        return ()
 
     def run(
         self,

@@ -6,11 +6,9 @@ from collections.abc import Callable, Iterator
 
 from filters.models.sensor import OwnSensor
 from filters.models.sensor.own_file import OwnFileError
-from harness.study.lines import KeyLines
-from harness.study.mistakes import Finding, KeyPath, StudyError, mistakes_of
-from harness.study.reader import read_text
+from harness.study.mistakes import Finding, KeyPath
 from harness.study.schema import Scene
-from harness.study.study import Study
+from harness.study.study import Study, study_error
 
 
 def own_sensors(study: Study) -> list[str]:
@@ -67,7 +65,4 @@ def _check(study: Study, check: Callable[[Scene, OwnSensor], object]) -> None:
             finding = Finding(path, wrong.rule, wrong.remedy, sensor.kind)
             findings.setdefault((sensor.kind, wrong.rule), finding)
     if findings:
-        file, lines = None, {}
-        if study.path is not None:
-            file, lines = str(study.path), KeyLines(read_text(study.path)).lines
-        raise StudyError(mistakes_of(findings.values(), study.document, file, lines))
+        raise study_error(study, findings.values())

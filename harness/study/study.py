@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import copy
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -143,6 +143,14 @@ def study_from(document: Mapping[str, Any], name: str = "study") -> Study:
         return _study(own, name, None)
     except Findings as found:
         raise StudyError(mistakes_of(found.findings, own)) from None
+
+
+def study_error(study: Study, findings: Iterable[Finding]) -> StudyError:
+    """What is found wrong with a study after it was read, placed in its file if it has one."""
+    file, lines = None, {}
+    if study.path is not None:
+        file, lines = str(study.path), KeyLines(read_text(study.path)).lines
+    return StudyError(mistakes_of(findings, study.document, file, lines))
 
 
 def _study(document: dict[str, Any], name: str, path: Path | None) -> Study:

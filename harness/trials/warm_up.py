@@ -27,6 +27,7 @@ def warm_up(tasks: Iterable[Task], tell: Callable[[], None] = lambda: None) -> N
             for case in task.cases:
                 combination = (
                     type(case.strategy),
+                    *case.strategy.kernel_choice(),
                     *_models(task.scene),
                     *_models(case.assumed),
                 )

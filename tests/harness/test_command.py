@@ -15,6 +15,7 @@ import pytest
 
 import trackassay
 from harness import cli
+from harness.study.memory import machine_memory
 
 ROOT = Path(__file__).parents[2]
 SMOKE = ROOT / "studies" / "smoke.toml"
@@ -101,6 +102,20 @@ def test_check_says_what_a_study_would_do(command):
     assert "8" in out.split("cases")[1].split("\n")[0]
     assert "200 scenes, 800 runs of a strategy" in out
     assert "outside the region" in out
+
+
+@pytest.mark.parametrize("word", ["check", "run"])
+def test_particles_beyond_memory_are_a_mistake_in_the_study(command, tmp_path, word):
+    """A thousand million of four states, two measured: 15 numbers of 8 bytes each."""
+    if machine_memory() > 1.2e11:
+        pytest.skip("they fit into this machine")
+    path = tmp_path / "cloud.toml"
+    table = '[strategies.cloud]\nkind = "particle-filter"\nparticles = 1_000_000_000\n\n'
+    path.write_text(SMOKE.read_text().replace("[strategies.", table + "[strategies.", 1))
+    code, _, messages = command(word, path)
+    assert code == 2
+    assert "strategies.cloud.particles = 1000000000: needs 120 GB of memory" in messages
+    assert "take at most" in messages
 
 
 def test_check_prints_the_schema(command):
