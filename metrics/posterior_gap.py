@@ -8,6 +8,7 @@ from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike
+from scipy.spatial.distance import cdist
 from scipy.special import xlogy
 
 from metrics.consistency import eliminate
@@ -97,11 +98,27 @@ def _shares_covariance(mixtures: GaussianMixtures) -> bool:
 
 def _overlap_with_kernels(mixtures: GaussianMixtures, kernels: GaussianMixtures) -> FloatArray:
     """`log_overlap` where all Q_j of the second are the same: the first, widened, at its means."""
+    if _shares_covariance(mixtures):
+        return _overlap_of_kernels(mixtures, kernels)
     widened = gaussian_mixtures(
         mixtures.weights, mixtures.means, mixtures.covariances + kernels.covariances[..., :1, :, :]
     )
     at_means = log_density(widened, kernels.means) + log_weights(kernels)
     return log_sum(at_means, axis=-1) * kernels.exist
+
+
+def _overlap_of_kernels(first: GaussianMixtures, second: GaussianMixtures) -> FloatArray:
+    """`log_overlap` where all P_i are the same and all Q_j are: by distances after whitening."""
+    overlap = np.full(first.weights.shape[:-1], np.nan)
+    for place in map(tuple, np.argwhere(~np.isnan(first.exist * second.exist))):
+        p, q = first.at(place), second.at(place)
+        root = np.linalg.cholesky(p.covariances[0] + q.covariances[0])
+        ours, others = (np.linalg.solve(root, m.means.T).T for m in (p, q))
+        squares = cdist(ours, others, "sqeuclidean")
+        terms = log_weights(p)[:, np.newaxis] + log_weights(q) - 0.5 * squares
+        height = np.log(np.diagonal(root)).sum() + len(root) / 2 * LOG_TWO_PI
+        overlap[place] = log_sum(terms.ravel(), axis=0) - height
+    return overlap[()]
 
 
 def _check_alike(first: GaussianMixtures, second: GaussianMixtures) -> None:

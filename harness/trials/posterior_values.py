@@ -16,7 +16,7 @@ from filters.random_numbers import POSTERIOR_GAP, REGION_LEVEL, Numbers, generat
 from harness.scene.batch import Truth
 from harness.study.schema import Calibration, PosteriorGap
 from metrics.calibration import coordinate_transform, log_score, region_level
-from metrics.gaussian_mixtures import GaussianMixtures, gaussian_mixtures, marginal
+from metrics.gaussian_mixtures import GaussianMixtures, gaussian_mixtures
 from metrics.kernel_density import kernel_mixtures
 from metrics.posterior_gap import (
     ReferenceDraws,
@@ -52,11 +52,16 @@ class ReferenceTrial:
 
 def mixtures_of(recorded: Posteriors, axes: int) -> list[GaussianMixtures | None]:
     """Posteriors in position and velocity, (scans, C) of each trial; None for one without any."""
+    kinematics = slice(2 * axes)
+    recorded = recorded._replace(
+        means=recorded.means[:, kinematics],
+        covariances=recorded.covariances[:, kinematics, kinematics],
+    )
     ends = np.cumsum(recorded.counts.ravel()).reshape(recorded.counts.shape)
     found: list[GaussianMixtures | None] = []
     for counts, last in zip(recorded.counts, ends, strict=True):
         parts = [_components(recorded, end - n, end) for n, end in zip(counts, last, strict=True)]
-        found.append(_padded(parts, recorded, axes) if counts.any() else None)
+        found.append(_padded(parts, recorded) if counts.any() else None)
     return found
 
 
@@ -70,9 +75,7 @@ def _components(recorded: Posteriors, first: int, end: int) -> np.ndarray:
     return np.sort(places[order[~light]])
 
 
-def _padded(
-    parts: Sequence[np.ndarray], recorded: Posteriors, axes: int
-) -> GaussianMixtures | None:
+def _padded(parts: Sequence[np.ndarray], recorded: Posteriors) -> GaussianMixtures | None:
     n = recorded.means.shape[1]
     most = max(len(part) for part in parts)
     weights = np.zeros((len(parts), most))
@@ -87,23 +90,21 @@ def _padded(
         means[k, : len(part)] = recorded.means[part]
         if covariances is not None:
             covariances[k, : len(part)] = recorded.covariances[part]
-    kinematics = slice(2 * axes)
     if not weights.any():
         return None
     if covariances is None:
-        return kernel_mixtures(weights, means[..., kinematics])
-    return marginal(gaussian_mixtures(weights, means, covariances), kinematics)
+        return kernel_mixtures(weights, means)
+    return gaussian_mixtures(weights, means, covariances)
 
 
 def _are_sound(recorded: Posteriors, part: np.ndarray) -> bool:
     """Whether a posterior is one: finite, and no component nor the whole cloud has collapsed."""
-    means = recorded.means[part]
-    if not np.isfinite(means).all():
+    weights, means = recorded.weights[part], recorded.means[part]
+    if not (np.isfinite(weights).all() and np.isfinite(means).all()):
         return False
     if len(recorded.covariances):
         covariances = recorded.covariances[part]
     else:
-        weights = recorded.weights[part]
         offsets = means - weights @ means
         covariances = (weights * offsets.T) @ offsets
     try:
