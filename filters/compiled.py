@@ -14,18 +14,20 @@ from __future__ import annotations
 
 import functools
 import hashlib
+import inspect
 import os
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any, ClassVar, TypeVar
 
 import llvmlite
 import numba
 import numpy as np
-from numba.core import caching
+from numba.core import caching, types
 from numba.core import config as numba_config
+from numba.core.typing.templates import AbstractTemplate, infer_global
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
@@ -111,6 +113,39 @@ def kernel(function: Function) -> Function:
             if not _no_place_to_cache(error):
                 raise
     return numba.njit(**_OPTIONS)(function)
+
+
+def chosen_by_type(argument: str, choices: dict[type, Any]) -> Any:
+    """Return a function that stands for one of several helpers: by the type of one argument.
+
+    The class of a record is known when compiling, so the other helpers are not even compiled;
+    numbers that kernels are built with would reach the helpers as numbers, and all be compiled.
+
+    argument    its name in the helpers, which all take the same
+    choices     class of that argument, a NamedTuple, and the helper for it
+    """
+    plain = {kind: getattr(choice, "py_func", choice) for kind, choice in choices.items()}
+    place = list(inspect.signature(next(iter(plain.values()))).parameters).index(argument)
+
+    def stand_in(*arguments: Any) -> Any:
+        return plain[type(arguments[place])](*arguments)
+
+    class Chosen(AbstractTemplate):  # numba's overload() would compile the helpers once more
+        key = stand_in
+        prefer_literal = True  # as helpers are called, so that sizes reach them as constants
+        entries: ClassVar[dict[Any, Any]] = {}
+
+        def generic(self, kinds: Any, keywords: Any) -> Any:
+            kind: Any = types.Dispatcher(choices[kinds[place].instance_class])
+            signature = kind.get_call_type(self.context, kinds, keywords)
+            self.entries[signature.args] = kind.get_overload(signature)
+            return signature
+
+        def get_impl_key(self, signature: Any) -> Any:
+            return self.entries[signature.args]
+
+    infer_global(stand_in, types.Function(Chosen))
+    return stand_in
 
 
 def compile_to_pointer(signature: Any, function: Callable[..., Any]) -> Any:

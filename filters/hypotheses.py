@@ -41,6 +41,16 @@ HYPOTHESIS = np.dtype(
 )
 
 
+class Component(NamedTuple):
+    """A component of the prediction; its covariance is row 2 * slot of the hypotheses'."""
+
+    slot: int  # among all components predicted
+    parent: int  # among those of the mixture
+    mode: int
+    weight: float
+    mean: Any  # (n,)
+
+
 class Hypotheses(NamedTuple):
     """Room for the hypotheses of one scan; how many rows are in use is told beside it."""
 
@@ -63,8 +73,17 @@ REDUCE = types.int64(_HYPOTHESES, types.int64, types.int64, VECTOR, _MIXTURE)
 
 
 @helper
-def normalise(table: Any, rows: int) -> None:
-    """Set weight = exp(log_weight) / sum, safe at any magnitude; not all may be -inf."""
+def own_covariance(hypotheses: Hypotheses, row: int) -> int:
+    """Place of a covariance that one row alone uses: behind those of the components."""
+    return hypotheses.covariances.shape[0] - hypotheses.means.shape[0] + row
+
+
+@helper
+def normalise(table: Any, rows: int) -> float:
+    """Set weight = exp(log_weight) / sum, safe at any magnitude; not all may be -inf.
+
+    returns     log of the sum
+    """
     heaviest = -math.inf
     for h in range(rows):
         heaviest = max(heaviest, table[h].log_weight)
@@ -75,3 +94,4 @@ def normalise(table: Any, rows: int) -> None:
         total += weight
     for h in range(rows):
         table[h].weight /= total
+    return heaviest + math.log(total)

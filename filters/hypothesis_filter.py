@@ -14,16 +14,25 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from filters.compiled import helper, kernel
-from filters.gaussian import predict_covariance
-from filters.hypotheses import HYPOTHESIS, Hypotheses
-from filters.linearise import room_for_prediction
-from filters.mixture import (
-    Mixture,
-    copy_gaussian,
-    forget_history,
-    mixture_moments,
-    room_for_mixture,
+from filters.existence import Existence, predict_existence, update_existence
+from filters.hypotheses import HYPOTHESIS, Component, Hypotheses
+from filters.interacting import (
+    Modes,
+    branch_of,
+    branches_of,
+    interact,
+    mode_count,
+    most_predicted,
+    motion_of,
+    room_for_mixing,
+    start_in_modes,
 )
+from filters.linearisation.choice import move
+from filters.linearisation.converted import Converted
+from filters.linearisation.iterated import Iterated
+from filters.linearisation.room import UpdateRoom, room_for_steps, room_for_update
+from filters.linearisation.rules import PointRule
+from filters.mixture import Mixture, copy_gaussian, mixture_moments, room_for_mixture
 from filters.models.contract import Models, MotionModel
 from filters.posteriors import keep_mixture
 from filters.records import zeroed_records
@@ -38,7 +47,7 @@ from filters.track import (
     past_limit,
     scan_of,
 )
-from filters.update import Gate, explain_by_component, settle
+from filters.update import UpdateRules, explain_by_component, settle
 
 ESTIMATE_MEAN = 0
 ESTIMATE_HEAVIEST = 1
@@ -49,7 +58,9 @@ class HypothesisStrategy(NamedTuple):
 
     reduce: Callable[..., Any]  # a compiled reduction for this state size
     settings: np.ndarray  # of the reduction
-    gate: Gate
+    rules: UpdateRules
+    modes: Modes
+    existence: Existence
     ending: Ending
     estimate: int  # ESTIMATE_MEAN or ESTIMATE_HEAVIEST
 
@@ -58,99 +69,93 @@ class Room(NamedTuple):
     """Working memory of one kernel call."""
 
     mixture: Mixture
+    mixing: Any  # see room_for_mixing
     hypotheses: Hypotheses
-    prediction: Any  # see room_for_prediction
-    step: Any  # see _room_for_step
+    update: UpdateRoom
+    steps: Any  # (modes,) see room_for_steps
 
 
-def room_for(n: int, m: int, reduction: Reduction, most_detections: int) -> Room:
+def room_for(
+    n: int, m: int, rules: UpdateRules, modes: Modes, reduction: Reduction, most_detections: int
+) -> Room:
     """Working memory for the mixtures that a reduction leaves."""
-    capacity = reduction.capacity
-    most_rows = capacity * (1 + most_detections)
+    capacity = max(mode_count(modes), reduction.capacity)
+    predicted = most_predicted(modes, capacity)
+    most_rows = predicted * (1 + most_detections)
+    rows_have_their_own = isinstance(rules.detecting, PointRule) or isinstance(
+        rules.linearisation, Iterated | Converted
+    )
+    points = [len(how.points) for how in rules if isinstance(how, PointRule)]
     return Room(
         room_for_mixture(n, capacity, reduction.depth),
+        room_for_mixing(n, modes),
         Hypotheses(
             zeroed_records(most_rows, HYPOTHESIS),
             np.empty((most_rows, n)),
-            np.empty((2 * capacity, n, n)),
+            np.empty((2 * predicted + (most_rows if rows_have_their_own else 0), n, n)),
             np.empty((most_rows if reduction.depth else 0, reduction.depth), np.int64),
             np.empty((reduction.slots, n + 2, n)),
         ),
-        room_for_prediction(n, m),
-        _room_for_step(n, m),
+        room_for_update(n, m, max(points, default=0)),
+        room_for_steps(n, mode_count(modes)),
     )
-
-
-def _room_for_step(n: int, m: int) -> np.ndarray:
-    """Room for moving one component on and comparing it with detections: one record."""
-    room = zeroed_records(
-        1,
-        [
-            ("expected", float, (n,)),  # mean after the interval
-            ("transition", float, (n, n)),  # Jacobian of the motion
-            ("disturbance", float, (n, n)),  # process noise
-            ("filled_for", float),  # s, the interval of these two; kept while the motion is linear
-            ("square", float, (n, n)),
-            ("differences", float, (2, m)),
-        ],
-    )
-    room["filled_for"] = math.nan
-    return room
 
 
 @helper
-def _predict(n: int, motion: MotionModel, interval: float, component: int, room: Room) -> None:
+def _predict(
+    n: int,
+    how: Any,
+    motion: MotionModel,
+    interval: float,
+    parent: int,
+    slot: int,
+    step: Any,
+    room: Room,
+) -> None:
     """Move one component on over an interval."""
-    before, step = room.mixture.means[component], room.step[0]
+    mean, covariance = room.mixture.means[parent], room.mixture.covariances[parent]
+    predicted = room.hypotheses.covariances[2 * slot]
     if not motion.linear or step.filled_for != interval:
-        motion.jacobian(motion.parameters, interval, before, step.transition[:])
-        motion.process_noise(motion.parameters, interval, before, step.disturbance[:])
+        motion.jacobian(motion.parameters, interval, mean, step.transition[:])
+        motion.process_noise(motion.parameters, interval, mean, step.disturbance[:])
         step.filled_for = interval
-    motion.transition(motion.parameters, interval, before, step.expected[:])
-    predict_covariance(
-        n,
-        step.transition,
-        step.disturbance,
-        room.mixture.covariances[component],
-        step.square,
-        room.hypotheses.covariances[2 * component],
-    )
+    move(n, how, motion, interval, mean, covariance, step, predicted, room.update)
 
 
 @helper
 def explain_scan(
-    n: int, m: int, models: Models, gate: Gate, scan: Scan, count: int, is_first: bool, room: Room
-) -> int:
-    """Fill the table of hypotheses of one scan; the prior holds at the first scan as it is."""
-    mixture, hypotheses, step = room.mixture, room.hypotheses, room.step[0]
+    n: int,
+    m: int,
+    models: Models,
+    rules: UpdateRules,
+    modes: Modes,
+    scan: Scan,
+    count: int,
+    is_first: bool,
+    room: Room,
+) -> tuple[int, int, float]:
+    """Fill the table of hypotheses of one scan; the prior holds at the first scan as it is.
+
+    returns     rows; components predicted; and log total weight, see settle
+    """
+    mixture, hypotheses = room.mixture, room.hypotheses
+    branches = branches_of(modes, is_first)
     rows = 0
-    for component in range(count):
+    for slot in range(count * branches):
+        parent = slot // branches
+        weight, mode = branch_of(modes, mixture, parent, slot % branches, branches)
+        step = room.steps[mode]
         if is_first:
-            copy_gaussian(
-                n,
-                mixture.means[component],
-                mixture.covariances[component],
-                step.expected,
-                hypotheses.covariances[2 * component],
-            )
+            mean, covariance = mixture.means[parent], mixture.covariances[parent]
+            copy_gaussian(n, mean, covariance, step.expected, hypotheses.covariances[2 * slot])
         else:
-            _predict(n, models.motion, scan.interval, component, room)
+            motion = motion_of(modes, mode)
+            _predict(n, rules.linearisation, motion, scan.interval, parent, slot, step, room)
+        component = Component(slot, parent, mode, weight, step.expected[:])
         rows = explain_by_component(
-            n,
-            m,
-            models,
-            gate,
-            scan,
-            component,
-            mixture.weights[component],
-            step.expected[:],
-            hypotheses,
-            rows,
-            room.prediction[0],
-            step.differences,
+            n, m, models, rules, scan, component, hypotheses, rows, room.update
         )
-    settle(hypotheses, rows, mixture.weights)
-    return rows
+    return rows, count * branches, settle(hypotheses, rows)
 
 
 @helper
@@ -198,17 +203,21 @@ def _run_trial(
     tracks: Tracks,
     room: Room,
 ) -> None:
-    mixture, hypotheses = room.mixture, room.hypotheses
-    mixture.weights[0] = 1.0
+    mixture, hypotheses, modes = room.mixture, room.hypotheses, strategy.modes
     mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
-    copy_gaussian(n, mean, prior.covariance, mixture.means[0], mixture.covariances[0])
-    forget_history(mixture.histories[0])
-    count = 1
+    count = start_in_modes(n, modes, mean, prior, mixture)
+    existence = strategy.existence.start
     empty_scans = 0
     for k in range(scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
-        rows = explain_scan(n, m, models, strategy.gate, scan, count, k == 0, room)
-        nothing_in_gate = rows == count
+        if k > 0:
+            existence = predict_existence(strategy.existence, existence)
+            count = interact(n, modes, mixture, count, room.mixing)
+        rows, predicted, log_ratio = explain_scan(
+            n, m, models, strategy.rules, modes, scan, count, k == 0, room
+        )
+        existence = update_existence(existence, log_ratio)
+        nothing_in_gate = rows == predicted
         empty_scans = empty_scans + 1 if nothing_in_gate else 0
         tracks.hypotheses[trial] += rows
         tracks.scans_run[trial] += 1
@@ -221,11 +230,14 @@ def _run_trial(
 
         estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
         _estimate(n, strategy.estimate, count, mixture, estimate, spread)
-        if past_limit(strategy.ending, empty_scans, spread):
+        ends = existence < strategy.existence.end_below
+        if ends or past_limit(strategy.ending, empty_scans, spread):
             clear_estimate(n, estimate, spread)
             return
         tracks.present[trial, k] = True
         keep_mixture(n, mixture, count, trial, k, tracks.posteriors)
+        if tracks.existence.shape[1] > 0:
+            tracks.existence[trial, k] = existence
 
 
 @functools.cache

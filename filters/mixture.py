@@ -89,6 +89,14 @@ def copy_gaussian(n: int, mean: Any, covariance: Any, to_mean: Any, to_covarianc
 
 
 @helper
+def copy_component(n: int, source: Mixture, i: int, target: Mixture, j: int) -> None:
+    """Copy all of component i of one mixture to component j of another."""
+    target.weights[j] = source.weights[i]
+    target.modes[j] = source.modes[i]
+    copy_gaussian(n, source.means[i], source.covariances[i], target.means[j], target.covariances[j])
+
+
+@helper
 def mixture_moments(n: int, mixture: Mixture, count: int, mean: Any, covariance: Any) -> None:
     """Write mean (n,) and covariance (n, n) of the first `count` components together."""
     weights, means, covariances = mixture.weights, mixture.means, mixture.covariances

@@ -22,6 +22,7 @@ import numpy as np
 from filters.compiled import helper, kernel
 from filters.hypotheses import Hypotheses
 from filters.hypothesis_filter import Room, explain_scan, must_be_detected
+from filters.interacting import OneMode
 from filters.mixture import (
     Mixture,
     add_to_covariance,
@@ -45,7 +46,7 @@ from filters.track import (
     past_limit,
     scan_of,
 )
-from filters.update import Gate
+from filters.update import UpdateRules
 
 
 class RaoBlackwellisedStrategy(NamedTuple):
@@ -53,7 +54,8 @@ class RaoBlackwellisedStrategy(NamedTuple):
 
     resample_below: float  # effective number of samples, a share of all
     resampling: int  # SYSTEMATIC or STRATIFIED, see resampling
-    gate: Gate
+    rules: UpdateRules
+    modes: OneMode
     ending: Ending
 
 
@@ -164,8 +166,10 @@ def _run_trial(
     for k in range(scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
         open_at(numbers, first_trial + trial, STRATEGY, k)
-        rows = explain_scan(n, m, models, strategy.gate, scan, particles, k == 0, room)
-        nothing_in_gate = rows == particles
+        rows, predicted, _ = explain_scan(
+            n, m, models, strategy.rules, strategy.modes, scan, particles, k == 0, room
+        )
+        nothing_in_gate = rows == predicted
         empty_scans = empty_scans + 1 if nothing_in_gate else 0
         tracks.hypotheses[trial] += rows
         tracks.scans_run[trial] += 1

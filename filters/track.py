@@ -61,10 +61,13 @@ class Tracks(NamedTuple):
     hypotheses: np.ndarray  # (trials,) formed before reduction, summed over scans
     scans_run: np.ndarray  # (trials,) scans until the track was ended
     impossible: np.ndarray  # (trials,) scans impossible under the model assumed
+    existence: np.ndarray  # (trials, scans) probability that there is a target; (trials, 0) if sure
     posteriors: Posteriors  # where they are asked for
 
 
-def room_for_tracks(scans: Scans, n: int, posteriors: Posteriors = NOT_ASKED) -> Tracks:
+def room_for_tracks(
+    scans: Scans, n: int, posteriors: Posteriors = NOT_ASKED, with_existence: bool = False
+) -> Tracks:
     """Empty room for states of n numbers: no estimate anywhere, NaN where nothing is written."""
     trials, length = scans.origins.shape
     return Tracks(
@@ -75,6 +78,7 @@ def room_for_tracks(scans: Scans, n: int, posteriors: Posteriors = NOT_ASKED) ->
         np.zeros(trials, np.int64),
         np.zeros(trials, np.int64),
         np.zeros(trials, np.int64),
+        np.full((trials, length if with_existence else 0), np.nan),
         posteriors,
     )
 

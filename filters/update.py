@@ -6,9 +6,10 @@ detections gives M + 1 hypotheses a component:
     not detected    1 - PD PG
     detection j     PD N(z_j; zhat, S) / lambda(z_j), in the gate of probability PG
 
-as logarithms, times the component's own weight. PD is taken at the component's mean. The density of
-'not detected' stays the prior: the small correction for the gate is neglected. Who is told the true
-origin considers no other detection.
+as logarithms, times the component's own weight. PD is taken at the component's mean; by quadrature
+it stays inside the integral, for detections as well as misses (see detecting). Without
+that the density of 'not detected' stays the prior: the small correction for the gate is neglected.
+Who is told the true origin considers no other detection.
 
 Source: the weights of Bar-Shalom, Daum and Huang (2009), IEEE Control Systems 29(6), The
 probabilistic data association filter, for Poisson clutter, with intensity and PD left as functions.
@@ -19,10 +20,11 @@ from __future__ import annotations
 import math
 from typing import Any, NamedTuple
 
-from filters.cholesky import inverse_root_determinant, squared_distance
 from filters.compiled import helper
-from filters.hypotheses import NOT_DETECTED, Hypotheses, normalise
-from filters.linearise import first_order
+from filters.detecting import log_or_minus_infinity, weigh_by_detection
+from filters.hypotheses import NOT_DETECTED, Component, Hypotheses, normalise
+from filters.linearisation.choice import compare, given_detection, predict_measurement
+from filters.linearisation.room import UpdateRoom
 from filters.models.contract import Models
 from filters.track import ORIGIN_UNKNOWN, Scan
 
@@ -36,31 +38,21 @@ class Gate(NamedTuple):
     limit: float  # squared distance; infinite without a gate
 
 
-@helper
-def log_or_minus_infinity(value: float) -> float:
-    """Logarithm with log 0 = -inf, without a warning in plain Python."""
-    return math.log(value) if value > 0.0 else -math.inf
+class UpdateRules(NamedTuple):
+    """How hypotheses are formed; classes say which way, see linearisation.choice and detecting."""
+
+    gate: Gate
+    linearisation: Any
+    detecting: Any
 
 
 @helper
-def difference(m: int, periods: Any, detection: Any, expected: Any, out: Any) -> None:
-    """Write detection - expected, angles the short way round."""
-    for i in range(m):
-        value = detection[i] - expected[i]
-        if periods[i] > 0.0:
-            value -= periods[i] * round(value / periods[i])
-        out[i] = value
-
-
-@helper
-def _fill_row(
-    row: Any, log_weight: float, distance: float, parent: int, detection: int, covariance: int
-) -> None:
-    row.log_weight = log_weight
+def _fill_row(row: Any, component: Component, detection: int, distance: float) -> None:
+    row.weight = component.weight  # before the scan, until weights are settled
     row.distance = distance
-    row.parent = parent
+    row.parent = component.parent
+    row.mode = component.mode
     row.detection = detection
-    row.covariance = covariance
 
 
 @helper
@@ -68,82 +60,91 @@ def explain_by_component(
     n: int,
     m: int,
     models: Models,
-    gate: Gate,
+    rules: UpdateRules,
     scan: Scan,
-    component: int,
-    weight: float,
-    mean: Any,
+    component: Component,
     hypotheses: Hypotheses,
     rows: int,
-    prediction: Any,
-    work: Any,
+    room: UpdateRoom,
 ) -> int:
     """Append the hypotheses of one component to the table.
 
-    mean (n,); the component's covariance stands in hypotheses.covariances[2 * component], and what
-    a detection leaves of it is written behind it. work (2, m).
+    What a detection leaves of the component's covariance is written behind it, or in a place of the
+    row's own.
     returns     rows in use now
     """
-    table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
-    innovation, solved = work[0], work[1]
-    prior = 2 * component
-    log_weight = log_or_minus_infinity(weight)
-    usable = first_order(
-        n, m, models.sensor, scan.site, mean, covariances[prior], covariances[prior + 1], prediction
-    )
-    detected = models.detection.probability(models.detection.parameters, scan.site, mean)
+    table, how, sensor = hypotheses.table, rules.linearisation, models.sensor
+    log_weight = log_or_minus_infinity(component.weight)
 
-    log_missed = log_or_minus_infinity(1.0 - detected * gate.probability)
-    _fill_row(table[rows], log_weight + log_missed, 0.0, component, NOT_DETECTED, prior)
+    first = rows
+    _fill_row(table[rows], component, NOT_DETECTED, 0.0)
+    table[rows].log_weight = log_weight
+    table[rows].covariance = 2 * component.slot
     for i in range(n):
-        means[rows, i] = mean[i]
+        hypotheses.means[rows, i] = component.mean[i]
     rows += 1
-    if not usable:
-        return rows
 
-    density_at_peak = inverse_root_determinant(m, prediction.factor)
-    peak = log_or_minus_infinity(detected * density_at_peak) - m * HALF_LOG_TWO_PI
-    for j in range(scan.detections.shape[0]):
+    count = scan.detections.shape[0]
+    if not predict_measurement(n, m, how, sensor, scan.site, component, hypotheses, room):
+        count = 0
+    for j in range(count):
         if scan.origin != ORIGIN_UNKNOWN and j != scan.origin:
             continue
-        difference(m, models.sensor.periods, scan.detections[j], prediction.measurement, innovation)
-        distance = squared_distance(m, prediction.factor, innovation, solved)
-        if not distance < gate.limit:
+        detection = scan.detections[j]
+        distance = compare(n, m, how, sensor, scan.site, component, hypotheses, detection, room)
+        if not distance < rules.gate.limit:
             continue
-        clutter = models.clutter.intensity(models.clutter.parameters, scan.site, scan.detections[j])
-        log_clutter = math.log(clutter) if clutter > 0.0 else 0.0  # see settle for none
-        log_found = log_weight + peak - 0.5 * distance - log_clutter
-        _fill_row(table[rows], log_found, distance, component, j, prior + 1)
+        _fill_row(table[rows], component, j, distance)
+        clutter = models.clutter.intensity(models.clutter.parameters, scan.site, detection)
         table[rows].clutter = clutter
-        for i in range(n):
-            value = mean[i]
-            for k in range(m):
-                value += prediction.gain[i, k] * innovation[k]
-            means[rows, i] = value
+        log_clutter = math.log(clutter) if clutter > 0.0 else 0.0  # see settle for none
+        log_density = given_detection(
+            n, m, how, sensor, scan.site, component, hypotheses, detection, rows, room
+        )
+        table[rows].log_weight = log_weight + log_density - m * HALF_LOG_TWO_PI - log_clutter
         rows += 1
+
+    weigh_by_detection(
+        n,
+        rules.detecting,
+        rules.gate.probability,
+        models.detection,
+        scan.site,
+        component,
+        hypotheses,
+        first,
+        rows,
+        room,
+    )
     return rows
 
 
 @helper
-def settle(hypotheses: Hypotheses, rows: int, weights: Any) -> None:
+def settle(hypotheses: Hypotheses, rows: int) -> float:
     """Complete the table of a scan: the two limits of the model, then normalised weights.
 
     No clutter: hypotheses that need clutter where there is none lose all weight to a detection in
     the gate, as in the limit from above. Impossible under the model (PD = 1, no gate, no
     detection): the prediction is kept.
 
-    weights (components,) of the prior.
+    returns     log of the total weight: how much likelier the scan is with the target than as
+                clutter alone; inf without clutter, -inf if impossible
     """
     table = hypotheses.table
-    if _some_without_clutter(table, rows):
+    without_clutter = _some_without_clutter(table, rows)
+    if without_clutter:
         for h in range(rows):
             if not _is_without_clutter(table[h]):
                 table[h].log_weight = -math.inf
-    if _all_impossible(table, rows):
+    impossible = _all_impossible(table, rows)
+    if impossible:
         for h in range(rows):
             if table[h].detection == NOT_DETECTED:
-                table[h].log_weight = log_or_minus_infinity(weights[table[h].parent])
-    normalise(table, rows)
+                table[h].log_weight = log_or_minus_infinity(table[h].weight)
+    log_total = normalise(table, rows)
+    if impossible:
+        return -math.inf
+    return math.inf if without_clutter else log_total
 
 
 @helper

@@ -23,6 +23,9 @@ STATE_MATRIX = types.void(VECTOR, types.float64, VECTOR, MATRIX)
 # sensor: (parameters, site, state, out)
 MEASUREMENT_OF = types.void(VECTOR, VECTOR, VECTOR, VECTOR)
 MEASUREMENT_MATRIX = types.void(VECTOR, VECTOR, VECTOR, MATRIX)
+# sensor: (parameters, site, measurement, out) -> |d position / d measurement|; out (m + 1, m): the
+# position, then its covariance
+CONVERSION = types.float64(VECTOR, VECTOR, VECTOR, MATRIX)
 # detection: (parameters, site, state); clutter: (parameters, site, measurement)
 SCALAR_OF = types.float64(VECTOR, VECTOR, VECTOR)
 
@@ -43,6 +46,7 @@ class SensorModel(NamedTuple):
     measure: Callable[..., Any]  # MEASUREMENT_OF: expected measurement, (m,)
     jacobian: Callable[..., Any]  # MEASUREMENT_MATRIX: d measure / d state, (m, n)
     noise: Callable[..., Any]  # MEASUREMENT_MATRIX: covariance of the noise, (m, m)
+    convert: Callable[..., Any]  # CONVERSION of a detection into a position
     same_noise: bool  # the noise depends neither on the state nor on the site
     parameters: np.ndarray  # (any,)
     sites: np.ndarray  # (scans, 2 * axes) m and m/s; or (1, 2 * axes) for a fixed sensor

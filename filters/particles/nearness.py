@@ -6,10 +6,11 @@ import math
 
 from filters.cholesky import factorise, squared_distance
 from filters.compiled import helper
+from filters.measurement_difference import difference
 from filters.models.contract import Models
 from filters.particles.cloud import Cloud, log_ratio_of
 from filters.track import Scan
-from filters.update import Gate, difference
+from filters.update import Gate
 
 
 @helper

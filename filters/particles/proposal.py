@@ -39,14 +39,16 @@ from filters.cholesky import (
     squared_distance,
 )
 from filters.compiled import helper
+from filters.detecting import log_or_minus_infinity
 from filters.gaussian import gain, innovation_covariance
+from filters.measurement_difference import difference
 from filters.mixture import copy_gaussian
 from filters.models.contract import Models, SensorModel
 from filters.particles.cloud import DETECTIONS, Cloud
 from filters.particles.weighing import NO_TRACE, fill_log_clutter
 from filters.random_numbers import Numbers, fill_normals, normal, uniform
 from filters.track import Scan
-from filters.update import HALF_LOG_TWO_PI, difference, log_or_minus_infinity
+from filters.update import HALF_LOG_TWO_PI
 
 _MOTION_SHARE = 0.1
 _LOG_MOTION_SHARE = math.log(_MOTION_SHARE)

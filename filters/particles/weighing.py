@@ -12,10 +12,12 @@ from typing import Any
 
 from filters.cholesky import factorise, inverse_root_determinant, squared_distance
 from filters.compiled import helper
+from filters.detecting import log_or_minus_infinity
+from filters.measurement_difference import difference
 from filters.models.contract import Models, SensorModel
 from filters.particles.cloud import Cloud, log_ratio_of
 from filters.track import Scan
-from filters.update import HALF_LOG_TWO_PI, difference, log_or_minus_infinity
+from filters.update import HALF_LOG_TWO_PI
 
 # Terms that together are this much lighter, as a logarithm, than the sum they join leave no trace.
 NO_TRACE = 38.0

@@ -9,6 +9,8 @@ from __future__ import annotations
 from collections.abc import Callable
 from typing import Any
 
+import numpy as np
+
 from filters.compiled import helper
 from filters.hypotheses import Hypotheses
 from filters.mixture import Mixture, add_to_covariance, add_to_mean, clear_moments, mirror
@@ -16,27 +18,44 @@ from filters.reductions.reduction import Reduction
 
 
 @helper
-def _match(n: int, hypotheses: Hypotheses, rows: int, mixture: Mixture) -> int:
+def _match(n: int, hypotheses: Hypotheses, rows: int, mode: int, mixture: Mixture, i: int) -> bool:
+    """Write the moments of a mode's rows as component i; False if they have no weight."""
     table, means, covariances = hypotheses.table, hypotheses.means, hypotheses.covariances
-    mean, covariance = mixture.means[0], mixture.covariances[0]
+    total = 0.0
+    for h in range(rows):
+        if table[h].mode == mode:
+            total += table[h].weight
+    if not total > 0.0:
+        return False
+    share = 1.0 / total
+    mean, covariance = mixture.means[i], mixture.covariances[i]
     clear_moments(n, mean, covariance)
     for h in range(rows):
-        add_to_mean(n, table[h].weight, means[h], mean)
+        if table[h].mode == mode:
+            add_to_mean(n, share * table[h].weight, means[h], mean)
     for h in range(rows):
-        spread = covariances[table[h].covariance]
-        add_to_covariance(n, table[h].weight, means[h], spread, mean, covariance)
+        if table[h].mode == mode:
+            spread = covariances[table[h].covariance]
+            add_to_covariance(n, share * table[h].weight, means[h], spread, mean, covariance)
     mirror(n, covariance)
-    mixture.weights[0] = 1.0
-    return 1
+    mixture.weights[i] = total
+    mixture.modes[i] = mode
+    return True
 
 
 def _match_moments(n: int) -> Callable[..., int]:
-    """One Gaussian with the mean and the covariance of all hypotheses together."""
+    """One Gaussian for each mode."""
 
     def reduce(hypotheses: Any, rows: int, origin: int, settings: Any, mixture: Any) -> int:
-        return _match(n, hypotheses, rows, mixture)
+        written = 0
+        for mode in range(int(settings[0])):
+            if _match(n, hypotheses, rows, mode, mixture, written):
+                written += 1
+        return written
 
     return reduce
 
 
-MATCH_MOMENTS = Reduction(_match_moments)
+def match_moments(modes: int = 1) -> Reduction:
+    """One Gaussian with the moments of all hypotheses together; one for each mode, if several."""
+    return Reduction(_match_moments, modes, np.array([modes], float))

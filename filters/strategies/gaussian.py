@@ -2,28 +2,51 @@
 
 from __future__ import annotations
 
-from typing import ClassVar, Literal
+from typing import TYPE_CHECKING, Annotated, ClassVar, Literal, Union
 
+from pydantic import Field
+
+from filters.detecting import AtMean
+from filters.existence import CERTAIN
 from filters.hypothesis_filter import (
     ESTIMATE_MEAN,
     HypothesisStrategy,
     compiled_filter,
     room_for,
 )
+from filters.interacting import Modes, OneMode
+from filters.linearisation.rules import gauss_hermite_rule
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
-from filters.reductions.match_moments import MATCH_MOMENTS
+from filters.reductions.match_moments import match_moments
 from filters.reductions.reduction import Reduction
+from filters.strategies.linearisations import (
+    LINEARISATIONS,
+    FirstOrder,
+    LinearisationKind,
+    PointsPerAxis,
+)
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
-from filters.update import Gate
+from filters.update import Gate, UpdateRules
+
+if TYPE_CHECKING:
+    AnyLinearisation = LinearisationKind
+else:  # a union over whatever the catalogue holds
+    AnyLinearisation = Annotated[Union[LINEARISATIONS], Field(discriminator="kind")]  # noqa: UP007
 
 
 class GaussianStrategy(Strategy):
     """A filter of Gaussian components; a kind names its reduction."""
 
     has_posteriors: ClassVar[bool] = True
+
+    linearisation: AnyLinearisation = FirstOrder()
+    """How a sensor that is not linear is taken; by default by its Jacobian."""
+    detection_points_per_axis: PointsPerAxis | None = None
+    """Keep a detection probability that varies inside the integral, by so many Gauss-Hermite points
+    along each axis of the state; by default it is taken at the mean."""
 
     def reduction(self) -> Reduction:
         """How the hypotheses of a scan become few components again."""
@@ -45,6 +68,34 @@ class GaussianStrategy(Strategy):
         """Most components that the posteriors of all trials and scans can have together."""
         return reduction.capacity * scans.origins.size
 
+    def modes(self, assumptions: Assumptions) -> Modes:
+        """The motions that a target may be in."""
+        return OneMode(assumptions.models.motion)
+
+    def update_rules(self, n: int, m: int) -> UpdateRules:
+        """How hypotheses are formed, for states of n and measurements of m numbers."""
+        points = self.detection_points_per_axis
+        return UpdateRules(
+            self.gate(m),
+            self.linearisation.settings(n),
+            AtMean() if points is None else gauss_hermite_rule(n, points),
+        )
+
+    def kernel_arguments(
+        self, assumptions: Assumptions, m: int, reduction: Reduction
+    ) -> HypothesisStrategy:
+        """The strategy as kernels take it, for measurements of m numbers."""
+        n = len(assumptions.prior.mean)
+        return HypothesisStrategy(
+            reduction.compiled(n),
+            reduction.settings,
+            self.update_rules(n, m),
+            self.modes(assumptions),
+            CERTAIN,
+            self.ends.rule(assumptions.axes),
+            self.estimate_choice(),
+        )
+
     def run(
         self,
         assumptions: Assumptions,
@@ -54,24 +105,18 @@ class GaussianStrategy(Strategy):
         record: bool = False,
     ) -> Tracks:
         """Follow the target through a batch of trials."""
-        n = len(assumptions.prior.mean)
-        m = scans.detections.shape[1]
+        n, m = len(assumptions.prior.mean), scans.detections.shape[1]
         reduction = self.reduction_for(scans, n, first_trial)
-        strategy = HypothesisStrategy(
-            reduction.compiled(n),
-            reduction.settings,
-            self.gate(m),
-            self.ends.rule(assumptions.axes),
-            self.estimate_choice(),
-        )
+        strategy = self.kernel_arguments(assumptions, m, reduction)
         posteriors = NOT_ASKED
         if record:
             trials, length = scans.origins.shape
             most = self.most_recorded(scans, reduction)
             posteriors = room_for_posteriors(trials, length, n, most)
         tracks = room_for_tracks(scans, n, posteriors)
-        room = room_for(n, m, reduction, scans.most_detections)
-        compiled_filter(n, m)(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
+        room = room_for(n, m, strategy.rules, strategy.modes, reduction, scans.most_detections)
+        kernel = compiled_filter(n, m)
+        kernel(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
         return tracks
 
 
@@ -116,7 +161,7 @@ class ProbabilisticDataAssociation(GatedStrategy):
 
     def reduction(self) -> Reduction:
         """Match the moments of all."""
-        return MATCH_MOMENTS
+        return match_moments()
 
 
 class KnownAssociation(GaussianStrategy):

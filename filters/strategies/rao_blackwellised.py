@@ -6,6 +6,7 @@ from collections.abc import Iterable
 from typing import Literal
 
 from filters.hypothesis_filter import room_for
+from filters.interacting import OneMode
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.rao_blackwellised import (
@@ -56,7 +57,8 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
         settings = RaoBlackwellisedStrategy(
             self.resample_below,
             RESAMPLINGS[self.resampling],
-            self.gate(m),
+            self.update_rules(n, m),
+            OneMode(assumptions.models.motion),
             self.ends.rule(assumptions.axes),
         )
         reduction = self.reduction()
@@ -74,7 +76,7 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
             first_trial,
             numbers,
             tracks,
-            room_for(n, m, reduction, scans.most_detections),
+            room_for(n, m, settings.rules, settings.modes, reduction, scans.most_detections),
             room_for_sampling(self.particles),
         )
         return tracks

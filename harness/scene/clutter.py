@@ -12,9 +12,9 @@ import math
 from typing import Any
 
 from filters.compiled import helper
+from filters.measurement_difference import difference
 from filters.models.contract import Models, SensorModel
 from filters.random_numbers import CLUTTER, SPLIT, Numbers, exponential, normal, open_at, uniform
-from filters.update import difference
 
 
 @helper

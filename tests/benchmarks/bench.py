@@ -26,7 +26,7 @@ from reference_pda import reference_pda
 from scenes import CLUTTER_PER_SCAN, SCANS, Drawn, Estimates, drawn, first_trials, linear_model
 from timing import Record, Timing, interleaved, table
 
-from filters.hypothesis_filter import HypothesisStrategy, compiled_filter, room_for
+from filters.hypothesis_filter import compiled_filter, room_for
 from filters.strategies import (
     GaussianMixture,
     KnownAssociation,
@@ -107,18 +107,12 @@ def pda_rows(batch: Drawn) -> list[Record]:
 
 def pda_kernel(batch: Drawn) -> Callable[[], Tracks]:
     """Our PDA alone, its room and tracks made beforehand, as those of the C kernel are."""
-    models, prior, axes = batch.assumptions
+    models, prior, _ = batch.assumptions
     n, m = len(prior.mean), batch.scans.detections.shape[1]
     reduction = PDA.reduction()
-    strategy = HypothesisStrategy(
-        reduction.compiled(n),
-        reduction.settings,
-        PDA.gate(m),
-        PDA.ends.rule(axes),
-        PDA.estimate_choice(),
-    )
+    strategy = PDA.kernel_arguments(batch.assumptions, m, reduction)
     tracks = room_for_tracks(batch.scans, n)
-    room = room_for(n, m, reduction, batch.scans.most_detections)
+    room = room_for(n, m, strategy.rules, strategy.modes, reduction, batch.scans.most_detections)
     kernel = compiled_filter(n, m)
 
     def run_kernel() -> Tracks:

@@ -18,7 +18,7 @@ from small_worlds import (
     run_on,
 )
 
-from filters.reductions.match_moments import MATCH_MOMENTS
+from filters.reductions.match_moments import match_moments as matching
 
 DETECTIONS = [[0.5, 2.0], [1.5], [-3.0, 2.5], []]
 PDA_MEANS = [0.6603466374, 1.1863754444, 1.7988318155, 1.7988318155]
@@ -73,7 +73,7 @@ def test_the_association_weights_are_those_of_the_reference_library(k):
     mean, variance = (PDA_MEANS[k - 1], PDA_VARIANCES[k - 1] + 1.0) if k else (0.0, 2.0)
     world = random_walk_world(prior_mean=mean, prior_variance=variance)
     scan = np.reshape(DETECTIONS[k], (-1, 1))
-    found = look_inside(world, as_scans([[scan]], 1), reduction=MATCH_MOMENTS)
+    found = look_inside(world, as_scans([[scan]], 1), reduction=matching())
     np.testing.assert_allclose(found.table["weight"], PDA_WEIGHTS[k], rtol=0, atol=1e-8)
     start = [(1.0, world.plain.mean, world.plain.covariance)]
     plain = [row.weight for row in hypotheses_of(world.plain, start, scan)]

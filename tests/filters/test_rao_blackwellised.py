@@ -18,7 +18,10 @@ from small_worlds import (
     run_on,
 )
 
+from filters.detecting import AtMean
 from filters.hypothesis_filter import room_for
+from filters.interacting import OneMode
+from filters.linearisation.first_order import ByJacobian
 from filters.particles.resampling import STRATIFIED, SYSTEMATIC
 from filters.point_mass import point_mass_posteriors
 from filters.random_numbers import numbers_of
@@ -31,6 +34,7 @@ from filters.reductions.keep_all import keep_all
 from filters.strategies import UnreducedMixture
 from filters.strategies.strategy import gate_of
 from filters.track import Prior, room_for_tracks
+from filters.update import UpdateRules
 
 DETECTIONS = [[0.5, 2.0], [1.5, -3.0], [-3.0, 2.5], [], [4.0, 1.0]]
 AMBIGUOUS = {"detection_probability": 0.8, "clutter": 0.2}
@@ -41,9 +45,11 @@ def look_at_particles(
 ):
     """Run the kernel on one trial; return tracks, mixture and what was sampled."""
     n, m = len(world.assumptions.prior.mean), scans.detections.shape[1]
-    strategy = RaoBlackwellisedStrategy(resample_below, resampling, gate_of(1.0, m), NEVER)
+    rules = UpdateRules(gate_of(1.0, m), ByJacobian(), AtMean())
+    modes = OneMode(world.assumptions.models.motion)
+    strategy = RaoBlackwellisedStrategy(resample_below, resampling, rules, modes, NEVER)
     tracks = room_for_tracks(scans, n)
-    room = room_for(n, m, keep_all(particles), scans.most_detections)
+    room = room_for(n, m, rules, modes, keep_all(particles), scans.most_detections)
     sampling = room_for_sampling(particles)
     compiled_rao_blackwellised_filter(n, m)(
         world.assumptions.models,

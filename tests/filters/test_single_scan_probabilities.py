@@ -19,7 +19,7 @@ from small_worlds import (
     run_on,
 )
 
-from filters.reductions.match_moments import MATCH_MOMENTS
+from filters.reductions.match_moments import match_moments as matching
 
 # beta, PD, g, axes, P(nearest is the target's), P(nothing in the gate)
 CASES = [
@@ -99,7 +99,7 @@ def test_the_weight_of_not_detected_is_on_average_the_rate_of_target_free_gates(
                 world,
                 as_scans([scans], axes),
                 gate_probability,
-                MATCH_MOMENTS,
+                matching(),
             ).table["weight"][0]
             for scans in drawn.trials
         ]

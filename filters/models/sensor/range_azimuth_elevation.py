@@ -14,6 +14,7 @@ from pydantic import model_validator
 from filters.compiled import model_function
 from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF
 from filters.models.record import BadValue, Interval, NonNegative, Positive
+from filters.models.sensor.position_of import position_of_range_azimuth_and_elevation
 from filters.models.sensor.sensor import Sensor
 
 
@@ -69,6 +70,7 @@ class RangeAzimuthElevationSensor(Sensor):
 
     measure: ClassVar = range_azimuth_and_elevation
     jacobian: ClassVar = range_azimuth_and_elevation_jacobian
+    convert: ClassVar = position_of_range_azimuth_and_elevation
     components: ClassVar = ("range_m", "azimuth_deg", "elevation_deg")
     density_keys: ClassVar = ("clutter_density_per_m_deg2",)
 

@@ -11,6 +11,7 @@ from typing import Any, ClassVar, Literal
 from filters.compiled import model_function
 from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF
 from filters.models.record import Interval, NonNegative, Positive
+from filters.models.sensor.position_of import position_of_range_and_bearing
 from filters.models.sensor.sensor import Sensor
 
 
@@ -53,6 +54,7 @@ class RangeBearingSensor(Sensor):
 
     measure: ClassVar = range_and_bearing
     jacobian: ClassVar = range_and_bearing_jacobian
+    convert: ClassVar = position_of_range_and_bearing
     components: ClassVar = ("range_m", "bearing_deg")
     density_keys: ClassVar = ("clutter_density_per_m_deg",)
 

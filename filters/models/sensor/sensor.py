@@ -21,6 +21,7 @@ from filters.models.over_range import FactorOverRange, check_over_range
 from filters.models.record import BadValue, NonNegative, Probability, Ways, within
 from filters.models.sensor.noise import independent_noise, noise_over_range, noise_parameters
 from filters.models.sensor.place import Place
+from filters.models.sensor.position_of import no_position
 
 if TYPE_CHECKING:
     AnyDetection = DetectionLaw
@@ -52,6 +53,7 @@ class Sensor(Place):
 
     measure: ClassVar[ModelFunction]  # MEASUREMENT_OF
     jacobian: ClassVar[ModelFunction]  # MEASUREMENT_MATRIX
+    convert: ClassVar[ModelFunction] = no_position  # CONVERSION
     linear: ClassVar[bool] = False  # the Jacobian depends neither on the state nor on the site
     components: ClassVar[tuple[str, ...]]  # with their units: range_m, bearing_deg, ...
     wrapping: ClassVar[tuple[str, ...]] = ("bearing_deg", "azimuth_deg")
@@ -141,6 +143,7 @@ class Sensor(Place):
         return SensorModel(
             *self.functions(),
             noise.compiled,
+            self.convert.compiled,
             not is_growing,
             self.model_parameters(),
             self.sites(self.axes, times),

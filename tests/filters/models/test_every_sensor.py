@@ -10,10 +10,10 @@ from stonesoup.models.measurement.nonlinear import (
 )
 from stonesoup.types.state import State
 
+from filters.measurement_difference import difference
 from filters.models.record import BadValue
 from filters.models.sensor import SENSORS
 from filters.models.sensor.noise import noise_over_range
-from filters.update import difference
 
 KEYS = {
     "position": {"noise_sd_m": 2.0, "region_m": ((-500.0, 500.0), (-400.0, 300.0))},

@@ -9,11 +9,11 @@ from hypothesis import strategies as st
 from stonesoup.models.measurement.nonlinear import CartesianToBearingRange
 from stonesoup.types.state import State
 
+from filters.measurement_difference import difference
 from filters.models.sensor import PositionSensor, RangeBearingSensor
 from filters.models.sensor.noise import independent_noise
 from filters.models.sensor.position import position_jacobian, position_of
 from filters.models.sensor.range_bearing import range_and_bearing, range_and_bearing_jacobian
-from filters.update import difference
 
 
 def measured(function, site, state, m=2, parameters=(1.0, 1.0)):

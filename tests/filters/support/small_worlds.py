@@ -6,6 +6,8 @@ import numpy as np
 from plain_filters import Plain, chain, van_loan
 
 from filters.compiled import model_function
+from filters.detecting import AtMean
+from filters.existence import CERTAIN
 from filters.hypothesis_filter import (
     ESTIMATE_MEAN,
     HypothesisStrategy,
@@ -13,6 +15,8 @@ from filters.hypothesis_filter import (
     compiled_filter,
     room_for,
 )
+from filters.interacting import OneMode
+from filters.linearisation.first_order import ByJacobian
 from filters.models.contract import STATE_AFTER, STATE_MATRIX, Models, MotionModel
 from filters.models.motion import (
     NearlyConstantAcceleration,
@@ -39,6 +43,7 @@ from filters.strategies import (
 )
 from filters.strategies.strategy import Assumptions, gate_of
 from filters.track import ORIGIN_UNKNOWN, Ending, Prior, Scans, room_for_tracks
+from filters.update import UpdateRules
 
 DENSITY_KEYS = ("clutter_density_per_m", "clutter_density_per_m2", "clutter_density_per_m3")
 NEVER = Ending(0, np.inf, 1)
@@ -338,13 +343,16 @@ def look_inside(world, scans, gate_probability=1.0, reduction=NO_REDUCTION):
     strategy = HypothesisStrategy(
         reduction.compiled(n),
         reduction.settings,
-        gate_of(gate_probability, m),
+        UpdateRules(gate_of(gate_probability, m), ByJacobian(), AtMean()),
+        OneMode(world.assumptions.models.motion),
+        CERTAIN,
         NEVER,
         ESTIMATE_MEAN,
     )
     tracks = room_for_tracks(scans, n)
-    room = room_for(n, m, reduction, scans.most_detections)
-    compiled_filter(n, m)(world.assumptions.models, strategy, prior, scans, tracks, room)
+    room = room_for(n, m, strategy.rules, strategy.modes, reduction, scans.most_detections)
+    kernel = compiled_filter(n, m)
+    kernel(world.assumptions.models, strategy, prior, scans, tracks, room)
     rows = min(tracks.hypotheses[0], len(room.hypotheses.table))
     table = room.hypotheses.table[:rows]
     covariances = room.hypotheses.covariances[table["covariance"]]

@@ -1,0 +1,118 @@
+"""Linearisations that a study may choose, with their settings."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import Field
+
+from filters.linearisation.converted import Converted
+from filters.linearisation.first_order import ByJacobian
+from filters.linearisation.iterated import Iterated
+from filters.linearisation.rules import PointRule, cubature_rule, gauss_hermite_rule, unscented_rule
+from filters.models.record import Positive, Real, Record
+
+PointsPerAxis = Annotated[int, Field(strict=True, ge=2, le=32)]
+
+
+class LinearisationKind(Record):
+    """How a sensor that is not linear is taken; a kind adds its settings."""
+
+    def settings(self, n: int) -> Any:
+        """Settings as kernels take them, for states of n numbers."""
+        raise NotImplementedError
+
+
+class FirstOrder(LinearisationKind):
+    """The sensor's Jacobian at the predicted mean: the extended Kalman filter."""
+
+    kind: Literal["first-order"] = "first-order"
+    """Which linearisation: the Jacobian at the predicted mean."""
+
+    def settings(self, n: int) -> ByJacobian:
+        """None."""
+        return ByJacobian()
+
+
+class IteratedJacobian(LinearisationKind):
+    """The Jacobian at the estimate that each detection leads to."""
+
+    kind: Literal["iterated"]
+    """Which linearisation: the Jacobian at the estimate, found by iterating."""
+    at_most: Annotated[int, Field(strict=True, ge=1, le=100)] = 5
+    """Most steps for one detection; fewer are taken once the estimate stays put."""
+
+    def settings(self, n: int) -> Iterated:
+        """Settings as kernels take them."""
+        return Iterated(self.at_most)
+
+
+class Unscented(LinearisationKind):
+    """The scaled unscented transform."""
+
+    kind: Literal["unscented"]
+    """Which linearisation: the scaled unscented transform."""
+    alpha: Positive = 1.0
+    """Scale of the points' distance from the mean."""
+    beta: Real = 2.0
+    """What the central point's weight in covariances adds; 2 suits a Gaussian."""
+    kappa: Real | None = None
+    """Further scale, above minus the size of the state; by default 3 minus that size."""
+
+    def settings(self, n: int) -> PointRule:
+        """2 n + 1 points.
+
+        raises      ValueError: kappa not above -n
+        """
+        kappa = 3.0 - n if self.kappa is None else self.kappa
+        if kappa <= -n:
+            raise ValueError(f"kappa must be above {-n}, minus the size of the state")
+        return unscented_rule(n, self.alpha, self.beta, kappa)
+
+
+class Cubature(LinearisationKind):
+    """The spherical-radial cubature rule of third degree."""
+
+    kind: Literal["cubature"]
+    """Which linearisation: spherical-radial cubature of third degree."""
+
+    def settings(self, n: int) -> PointRule:
+        """2 n points."""
+        return cubature_rule(n)
+
+
+class GaussHermite(LinearisationKind):
+    """All combinations of Gauss-Hermite points along the axes of the state."""
+
+    kind: Literal["gauss-hermite"]
+    """Which linearisation: Gauss-Hermite points along each axis of the state."""
+    points_per_axis: PointsPerAxis = 3
+    """Points along each axis; their number to the power of the state's size is the cost."""
+
+    def settings(self, n: int) -> PointRule:
+        """All combinations.
+
+        raises      ValueError: too many
+        """
+        return gauss_hermite_rule(n, self.points_per_axis)
+
+
+class ConvertedMeasurements(LinearisationKind):
+    """Each detection as a position with a covariance of its own, debiased."""
+
+    kind: Literal["converted-measurements"]
+    """Which linearisation: none; range and angles become positions, debiased."""
+
+    def settings(self, n: int) -> Converted:
+        """None."""
+        return Converted()
+
+
+LINEARISATIONS = (
+    FirstOrder,
+    IteratedJacobian,
+    Unscented,
+    Cubature,
+    GaussHermite,
+    ConvertedMeasurements,
+)
