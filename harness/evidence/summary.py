@@ -112,11 +112,8 @@ def _columns(name: str, rates: Sequence[tuple[float, Interval]]) -> Mapping[str,
 
 
 def _mean_with_interval(name: str, values: np.ndarray, weights: np.ndarray) -> Row:
-    return _with_interval(name, _mean_of(values, weights), mean_interval(values, weights=weights))
-
-
-def _mean_of(values: np.ndarray, weights: np.ndarray) -> float:
-    return mean_influence(values, weights)[0]
+    mean, _ = mean_influence(values, weights)
+    return _with_interval(name, mean, mean_interval(values, weights=weights))
 
 
 def posterior_scan_rows(case: CaseScores, rules: ScoringRules) -> Mapping[str, np.ndarray]:
