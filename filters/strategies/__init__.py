@@ -4,7 +4,6 @@ from filters.strategies.gaussian import (
     KnownAssociation,
     MostProbableHypothesis,
     NearestNeighbour,
-    ProbabilisticDataAssociation,
 )
 from filters.strategies.mixtures import (
     GaussianMixture,
@@ -13,6 +12,7 @@ from filters.strategies.mixtures import (
     RunnallsMixture,
 )
 from filters.strategies.particles import ParticleFilter
+from filters.strategies.pda import ProbabilisticDataAssociation
 from filters.strategies.rao_blackwellised import RaoBlackwellisedParticleFilter
 from filters.strategies.unreduced import UnreducedMixture
 

@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING, Annotated, ClassVar, Literal, Union
 from pydantic import Field
 
 from filters.detecting import AtMean
-from filters.existence import CERTAIN
+from filters.existence import CERTAIN, Existence
 from filters.hypothesis_filter import (
     ESTIMATE_MEAN,
     HypothesisStrategy,
@@ -19,7 +19,6 @@ from filters.linearisation.rules import gauss_hermite_rule
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
-from filters.reductions.match_moments import match_moments
 from filters.reductions.reduction import Reduction
 from filters.strategies.linearisations import (
     LINEARISATIONS,
@@ -68,9 +67,13 @@ class GaussianStrategy(Strategy):
         """Most components that the posteriors of all trials and scans can have together."""
         return reduction.capacity * scans.origins.size
 
-    def modes(self, assumptions: Assumptions) -> Modes:
+    def kernel_modes(self, assumptions: Assumptions) -> Modes:
         """The motions that a target may be in."""
         return OneMode(assumptions.models.motion)
+
+    def existence_chain(self) -> Existence:
+        """How likely a target is taken to be."""
+        return CERTAIN
 
     def update_rules(self, n: int, m: int) -> UpdateRules:
         """How hypotheses are formed, for states of n and measurements of m numbers."""
@@ -90,8 +93,8 @@ class GaussianStrategy(Strategy):
             reduction.compiled(n),
             reduction.settings,
             self.update_rules(n, m),
-            self.modes(assumptions),
-            CERTAIN,
+            self.kernel_modes(assumptions),
+            self.existence_chain(),
             self.ends.rule(assumptions.axes),
             self.estimate_choice(),
         )
@@ -113,7 +116,8 @@ class GaussianStrategy(Strategy):
             trials, length = scans.origins.shape
             most = self.most_recorded(scans, reduction)
             posteriors = room_for_posteriors(trials, length, n, most)
-        tracks = room_for_tracks(scans, n, posteriors)
+        with_existence = strategy.existence != CERTAIN
+        tracks = room_for_tracks(scans, n, posteriors, with_existence)
         room = room_for(n, m, strategy.rules, strategy.modes, reduction, scans.most_detections)
         kernel = compiled_filter(n, m)
         kernel(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
@@ -151,17 +155,6 @@ class MostProbableHypothesis(GatedStrategy):
     def reduction(self) -> Reduction:
         """Keep the heaviest."""
         return HEAVIEST
-
-
-class ProbabilisticDataAssociation(GatedStrategy):
-    """Matches the moments of all hypotheses by one Gaussian."""
-
-    kind: Literal["pda"]
-    """Which strategy: probabilistic data association."""
-
-    def reduction(self) -> Reduction:
-        """Match the moments of all."""
-        return match_moments()
 
 
 class KnownAssociation(GaussianStrategy):

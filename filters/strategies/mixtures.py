@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Literal, Self
+from typing import Annotated, ClassVar, Literal, Self
 
 from pydantic import Field, model_validator
 
@@ -13,10 +13,10 @@ from filters.reductions.n_scan_pruning import n_scan_pruning
 from filters.reductions.prune_and_cap import prune_and_cap
 from filters.reductions.prune_merge_cap import prune_merge_cap
 from filters.reductions.reduction import Reduction
-from filters.strategies.gaussian import GatedStrategy
+from filters.strategies.interacting import InteractingStrategy
 
 
-class MixtureStrategy(GatedStrategy):
+class MixtureStrategy(InteractingStrategy):
     """A gated strategy of several components; a kind says which are left after a scan."""
 
     max_components: Annotated[Count, Field(le=10_000)] = 20
@@ -25,6 +25,8 @@ class MixtureStrategy(GatedStrategy):
     """Components of less weight than this share of the total are dropped."""
     estimate: Literal["mean", "heaviest"] = "mean"
     """What is reported: mean and matched covariance, or the heaviest component."""
+
+    mixes: ClassVar[bool] = False
 
     def estimate_choice(self) -> int:
         """How the mixture becomes one estimate."""

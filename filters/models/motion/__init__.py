@@ -1,5 +1,6 @@
 """Motion models: how a target moves, for the truth and as a strategy assumes it."""
 
+from filters.models.motion.constant_turn import ConstantTurn
 from filters.models.motion.coordinated_turn import CoordinatedTurn
 from filters.models.motion.nearly_constant_acceleration import NearlyConstantAcceleration
 from filters.models.motion.nearly_constant_velocity import NearlyConstantVelocity
@@ -12,4 +13,5 @@ MOTIONS = (
     NearlyConstantAcceleration,
     Singer,
     CoordinatedTurn,
+    ConstantTurn,
 )

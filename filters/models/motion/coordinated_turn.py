@@ -106,6 +106,11 @@ class CoordinatedTurn(Target):
 
     further_spreads: ClassVar[tuple[str, ...]] = ("start_turn_rate_sd_deg_per_s",)
 
+    @classmethod
+    def state_size_along(cls, axes: int) -> int | None:
+        """Length of a state; in a plane only."""
+        return 5 if axes == 2 else None
+
     def start_further(self) -> tuple[float, ...]:
         """Turn rate, rad/s."""
         return (math.radians(self.start_turn_rate_deg_per_s),)

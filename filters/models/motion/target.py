@@ -50,6 +50,11 @@ class Target(Record):
         """Length of the state."""
         return len(self.start_mean())
 
+    @classmethod
+    def state_size_along(cls, axes: int) -> int | None:
+        """Length of a state along so many axes; None where the motion has none."""
+        return 2 * axes
+
     def start_further(self) -> tuple[float, ...]:
         """Start of what the state holds behind position and velocity, SI."""
         return ()

@@ -21,6 +21,11 @@ class TargetWithAcceleration(Target):
 
     further_spreads: ClassVar[tuple[str, ...]] = ("start_acceleration_sd_m_per_s2",)
 
+    @classmethod
+    def state_size_along(cls, axes: int) -> int | None:
+        """Length of a state along so many axes."""
+        return 3 * axes
+
     def start_further(self) -> tuple[float, ...]:
         """Acceleration along each axis, m/s2."""
         return self.start_acceleration_m_per_s2
