@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from typing import Annotated, ClassVar, Self
 
 import numpy as np
@@ -11,6 +12,7 @@ from filters.existence import CERTAIN, Existence
 from filters.interacting import Modes, OneMode, SeveralModes
 from filters.models.motion.target import Target
 from filters.models.record import BadValue, Probability, Record
+from filters.models.sensor.sensor import Sensor
 from filters.strategies.gaussian import GatedStrategy
 from filters.strategies.modes import AnyMode, Mode, Probabilities, Transition, sums_to_one
 from filters.strategies.strategy import Assumptions
@@ -77,6 +79,11 @@ class InteractingStrategy(GatedStrategy):
         """Kernels are compiled for a number of modes."""
         return (*super().kernel_choice(), self.mode_count, self.existence is None)
 
+    def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
+        """Modes whose states are not of the size of the target's."""
+        wrong = (_misfit(name, mode, target) for name, mode in (self.modes or {}).items())
+        return (*super().misfits(target, sensor), *(one for one in wrong if one is not None))
+
     @model_validator(mode="after")
     def _modes_are_a_chain(self) -> Self:
         if self.modes is None:
@@ -111,7 +118,7 @@ def _check_probabilities(key: str, row: tuple[float, ...], count: int) -> None:
         raise BadValue(key, f"sums to {sum(row):.6g}, not to 1", "make its probabilities sum to 1")
 
 
-def unfit_mode(name: str, mode: Mode, target: Target) -> BadValue | None:
+def _misfit(name: str, mode: Mode, target: Target) -> BadValue | None:
     """What is wrong with a mode for the target that a strategy assumes."""
     size, axes = type(mode).target.state_size_along(target.axes), target.axes
     if size is None:

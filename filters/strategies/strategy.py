@@ -10,7 +10,9 @@ from pydantic import Field
 from scipy.stats import chi2
 
 from filters.models.contract import Models
-from filters.models.record import Count, Positive, Record
+from filters.models.motion.target import Target
+from filters.models.record import BadValue, Count, Positive, Record
+from filters.models.sensor.sensor import Sensor
 from filters.random_numbers import Numbers
 from filters.track import Ending, Prior, Scans, Tracks
 from filters.update import Gate
@@ -62,6 +64,10 @@ class Strategy(Record):
 
     def kernel_choice(self) -> tuple[object, ...]:
         """Settings that decide which code is compiled, beside the kind."""
+        return ()
+
+    def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
+        """What is wrong with the settings for the target and the sensor that are assumed."""
         return ()
 
     def memory_asked(self, n: int, m: int) -> Iterable[tuple[str, int, int]]:

@@ -14,6 +14,7 @@ from filters.models.sensor.own import FOLDER
 from harness.study.assumed import assumed_scene, assumption_findings
 from harness.study.blame import closeness, laid_at
 from harness.study.expand import Condition, conditions_of
+from harness.study.fit import unfit_strategies
 from harness.study.keys import STUDY, keys_of
 from harness.study.lines import KeyLines
 from harness.study.mistakes import (
@@ -173,6 +174,9 @@ def _study(document: dict[str, Any], name: str, path: Path | None) -> Study:
     if findings:
         raise Findings(findings)
     conditions = conditions_of(filled, axes_of(groups, known), folder)
+    findings = unfit_strategies(conditions)
+    if findings:
+        raise Findings(findings)
     return Study(name, path, document, record, conditions)
 
 

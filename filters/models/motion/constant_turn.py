@@ -16,10 +16,13 @@ from pydantic import model_validator
 
 from filters.compiled import model_function
 from filters.models.contract import STATE_AFTER, STATE_MATRIX, MotionModel
+from filters.models.motion.chain_of_integrators import spread_block
 from filters.models.motion.coordinated_turn import arc_factors
-from filters.models.motion.nearly_constant_velocity import white_acceleration_noise
 from filters.models.motion.target import Target
 from filters.models.record import BadValue, NonNegative, Real
+
+# Below this angle the closed forms of the noise lose digits to cancellation; their series do not.
+_SMALL_ANGLE = 1e-2
 
 
 @model_function(STATE_MATRIX)
@@ -54,6 +57,29 @@ def state_on_arc(parameters: Any, interval: float, state: Any, out: Any) -> None
     out[3] = sine * east + cosine * north
 
 
+@model_function(STATE_MATRIX)
+def noise_on_arc(parameters: Any, interval: float, state: Any, out: Any) -> None:
+    """Q, the integral of F(t) G psd G' F(t)' over the interval: exact for white acceleration."""
+    psd, angle = parameters[1], parameters[2] * interval
+    square = angle * angle
+    if abs(angle) < _SMALL_ANGLE:
+        along = 0.5 * (1 - square / 12 * (1 - square / 30))
+        across = (1 - square / 20 * (1 - square / 42)) / 6
+    else:
+        along = (1 - math.cos(angle)) / square
+        across = (angle - math.sin(angle)) / (square * angle)
+    cross = psd * interval**2
+    out[:] = 0.0
+    spread_block(2, 0, 0, 2 * psd * interval**3 * across, out)
+    spread_block(2, 0, 1, cross * along, out)
+    spread_block(2, 1, 0, cross * along, out)
+    spread_block(2, 1, 1, psd * interval, out)
+    out[0, 3] = cross * angle * across
+    out[1, 2] = -out[0, 3]
+    out[3, 0] = out[0, 3]
+    out[2, 1] = out[1, 2]
+
+
 class ConstantTurn(Target):
     """A plane target that turns at a stated rate."""
 
@@ -75,7 +101,7 @@ class ConstantTurn(Target):
         return MotionModel(
             state_on_arc.compiled,
             turn_matrix.compiled,
-            white_acceleration_noise.compiled,
+            noise_on_arc.compiled,
             np.array([self.axes, self.acceleration_psd_m2_per_s3, rate]),
             linear=True,
         )

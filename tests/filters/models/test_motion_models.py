@@ -21,6 +21,7 @@ from filters.models.motion.chain_of_integrators import (
     constant_velocity_matrix,
     constant_velocity_state,
 )
+from filters.models.motion.constant_turn import noise_on_arc, state_on_arc, turn_matrix
 from filters.models.motion.coordinated_turn import (
     arc_factors,
     turn_noise,
@@ -178,6 +179,26 @@ def test_the_jacobian_of_a_turn_is_its_derivative(rate):
     expected = numerical_jacobian(turned_state, [0.0, 0.0], 2.0, state, [1, 1, 1, 1, 1])
     found = matrix(turned_jacobian, [0.0, 0.0], 2.0, state)
     np.testing.assert_allclose(found, expected, rtol=1e-8, atol=1e-8)
+
+
+@pytest.mark.parametrize("rate", RATES)
+def test_a_turn_at_a_stated_rate_is_that_turn_and_its_noise_the_integral(rate):
+    """The matrix is that of a turn whose state holds the rate; Q by quadrature, as above."""
+    interval, psd = 2.0, 0.37
+    parameters = [2.0, psd, rate]
+    state = np.array([10.0, -20.0, 8.0, 3.0])
+    expected = moved(turned_state, [0.0, 0.0], interval, [*state, rate])[:4]
+    np.testing.assert_allclose(moved(state_on_arc, parameters, interval, state), expected)
+    F = matrix(turn_matrix, parameters, interval, state)
+    np.testing.assert_allclose(F @ state, expected, rtol=1e-13)
+
+    def spread(t):
+        F = matrix(turn_matrix, parameters, t, state)
+        return psd * F[:, 2:] @ F[:, 2:].T
+
+    by_quadrature, _ = quad_vec(spread, 0.0, interval, epsabs=1e-12)
+    found = matrix(noise_on_arc, parameters, interval, state)
+    np.testing.assert_allclose(found, by_quadrature, rtol=1e-9, atol=1e-12)
 
 
 @settings(derandomize=True, deadline=None)

@@ -19,7 +19,7 @@ KINDS = (
 )
 MOTIONS = (
     "nearly-constant-velocity, piecewise-constant-acceleration, nearly-constant-acceleration, "
-    "singer, coordinated-turn"
+    "singer, coordinated-turn, constant-turn"
 )
 
 CASES = {
