@@ -233,7 +233,7 @@ MISTAKES = {
         'assumes.target.motion = "coordinate-turn"',
         f'{AT}.target.motion = "coordinate-turn": is unknown; did you mean coordinated-turn? '
         "there are nearly-constant-velocity, piecewise-constant-acceleration, "
-        "nearly-constant-acceleration, singer, coordinated-turn",
+        "nearly-constant-acceleration, singer, coordinated-turn, constant-turn",
     ),
     "a motion that needs more": (
         'assumes.target.motion = "piecewise-constant-acceleration"',
