@@ -17,6 +17,7 @@ from harness.evidence.plans import FixedCount, KeyedCondition
 from harness.evidence.results import Results
 from harness.evidence.summary import (
     calibration_rows,
+    existence_row,
     posterior_row,
     posterior_scan_rows,
     scan_rows,
@@ -75,8 +76,8 @@ def _summarise(
                 "trials_chosen_by": "fixed",
                 "best_in": " ".join(best.get(case.name, [])),
             }
-            posterior = posterior_row(scored[case.name], keyed.rules)
-            summary.append({**settings, **row, **chosen, **posterior})
+            asked = existence_row(scored[case.name]) | posterior_row(scored[case.name], keyed.rules)
+            summary.append({**settings, **row, **chosen, **asked})
             times = condition.rules.scene.scan_times()
             by_scan = {
                 **scan_rows(scored[case.name], times),

@@ -60,6 +60,23 @@ def summary_row(case: CaseScores, measurement_size: int, counts_hypotheses: bool
     return row
 
 
+def existence_row(case: CaseScores) -> Row:
+    """Metrics of a case's probability of existence, where it follows that.
+
+    Over the scans of the window with an estimate, of trials that did not fail: on target where the
+    error is within the limit of track loss.
+    """
+    scores, counted = case.scores, case.counted
+    if np.isnan(scores.existence_error).all():
+        return {}
+    scans, on = scores.estimates[counted], scores.on_target[counted]
+    return {
+        **_mean_with_interval("existence_error", scores.existence_error[counted], scans),
+        **_mean_with_interval("existence_on", scores.existence_on[counted], on),
+        **_mean_with_interval("existence_off", scores.existence_off[counted], scans - on),
+    }
+
+
 def posterior_row(case: CaseScores, rules: ScoringRules) -> Row:
     """Metrics of a case's whole posteriors, where they are asked for; the last columns.
 

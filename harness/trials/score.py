@@ -12,6 +12,7 @@ from harness.study.schema import Calibration, Gospa, PosteriorGap, TrackLoss
 from harness.trials.posterior_scores import PosteriorScores, posterior_scores
 from harness.trials.posterior_values import PosteriorValues
 from metrics.consistency import nees, squared_mahalanobis
+from metrics.existence import ExistenceScores, existence_scores
 from metrics.gospa import single_target_gospa
 from metrics.position_error import mean_squared_error, squared_error
 from metrics.present import mean_where_present
@@ -56,6 +57,11 @@ class SpanScores:
     hypotheses: np.ndarray  # mean number formed a scan while the track lasted
     impossible: np.ndarray  # scans impossible under the model assumed
     outside: np.ndarray  # scans with the target outside the sensor's region
+    on_target: np.ndarray  # scans of the window with an estimate whose error is within the limit
+    # of strategies that follow existence, else NaN; see metrics.existence
+    existence_error: np.ndarray
+    existence_on: np.ndarray
+    existence_off: np.ndarray
     # (scans,), over held trials with an estimate there
     scan_estimates: np.ndarray
     scan_position_square: np.ndarray
@@ -65,8 +71,8 @@ class SpanScores:
     posterior: PosteriorScores | None = None
 
 
-TRIAL_COLUMNS = tuple(SpanScores.__dataclass_fields__)[:13]
-SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[13:-1]
+TRIAL_COLUMNS = tuple(SpanScores.__dataclass_fields__)[:17]
+SCAN_COLUMNS = tuple(SpanScores.__dataclass_fields__)[17:-1]
 
 
 def failed_trials(tracks: Tracks) -> np.ndarray:
@@ -100,6 +106,16 @@ def loss_limit(rules: TrackLoss, reference: Tracks | None, axes: int) -> np.ndar
     return np.where(reference.present, limit, np.inf)
 
 
+def _existence_scores(
+    tracks: Tracks, on_target: np.ndarray, seen: np.ndarray, window: slice
+) -> ExistenceScores:
+    """Scores of the probability of existence, NaN for strategies that don't follow it."""
+    trials, followed = tracks.existence.shape
+    if followed == 0:
+        return ExistenceScores(*np.full((3, trials), np.nan))
+    return existence_scores(tracks.existence[:, window], on_target, seen)
+
+
 def score_span(
     truth: Truth,
     tracks: Tracks,
@@ -125,10 +141,8 @@ def score_span(
     position_square = squared_error(truth.position, position, present)
     velocity_square = squared_error(truth.velocity, velocity, present)
     position_error = np.sqrt(position_square)
-    lost_at = loss_scan(
-        position_error, present, loss_limit(rules.track_loss, reference, axes),
-        rules.track_loss.for_scans,
-    )  # fmt: skip
+    limit = loss_limit(rules.track_loss, reference, axes)
+    lost_at = loss_scan(position_error, present, limit, rules.track_loss.for_scans)
     lost_at[failed] = -1
 
     consistency = nees(estimate - truth.kinematics, spread)
@@ -139,6 +153,9 @@ def score_span(
         position_error[:, window], seen, rules.gospa.cutoff_m, rules.gospa.order
     )
     localisation, missed, false = (np.where(failed, np.nan, part.mean(axis=1)) for part in parts)
+
+    on_target = (present & (position_error <= limit))[:, window]
+    existence = _existence_scores(tracks, on_target, seen, window)
 
     held = present & (lost_at < 0)[:, None]
     known = np.isfinite(tracks.own_distance)
@@ -165,6 +182,10 @@ def score_span(
         hypotheses=tracks.hypotheses / np.maximum(tracks.scans_run, 1),
         impossible=tracks.impossible,
         outside=truth.outside.sum(axis=1),
+        on_target=on_target.sum(axis=1),
+        existence_error=existence.error,
+        existence_on=existence.on,
+        existence_off=existence.off,
         scan_estimates=held.sum(axis=0),
         scan_position_square=held_sum(position_square),
         scan_velocity_square=held_sum(velocity_square),

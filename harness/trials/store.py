@@ -31,7 +31,7 @@ from harness.trials.score import SCAN_COLUMNS, TRIAL_COLUMNS, SpanScores
 from harness.trials.task import Span, SpanResult
 
 _COUNTS_OF_POSTERIORS = {"posteriors", "gaps", "scan_posteriors", "scan_gaps", "scan_gaps_held"}
-_INTEGERS = {"lost_at", "estimates", "impossible", "outside", "scan_estimates"}
+_INTEGERS = {"lost_at", "estimates", "impossible", "outside", "on_target", "scan_estimates"}
 _INTEGERS |= _COUNTS_OF_POSTERIORS | set(POSTERIOR_TABLE_COLUMNS)
 _FLAGS = {"failed"}
 # Null where posteriors were not asked for; tables lie trial by trial in one list.
