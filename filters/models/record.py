@@ -19,6 +19,8 @@ Count = Annotated[int, Field(strict=True, ge=1, le=1_000_000_000)]
 Interval = tuple[Real, Real]
 PerAxis = tuple[Real, ...]
 
+_MOST = 1e30  # larger numbers overflow when they are squared and multiplied
+
 Ways = tuple[tuple[str, ...], ...]  # ways to state one thing, each by some keys
 
 
@@ -47,6 +49,13 @@ def within(key: str) -> Iterator[None]:
         raise BadValue(f"{key}.{wrong.key}", wrong.rule, wrong.remedy) from None
 
 
+def _largest(value: object) -> float:
+    """Size of a number, or of the largest in a list of lists; 0 for anything else."""
+    if isinstance(value, tuple):
+        return max(map(_largest, value), default=0.0)
+    return abs(value) if isinstance(value, int | float) else 0.0
+
+
 class Record(BaseModel):
     """Frozen parameters, checked once; unknown keys are mistakes.
 
@@ -71,6 +80,16 @@ class Record(BaseModel):
             if key not in way
             for other in way
         ]
+
+    @model_validator(mode="after")
+    def _numbers_can_be_reckoned_with(self) -> Self:
+        for name, value in self:
+            if _largest(value) > _MOST:
+                key = type(self).model_fields[name].alias or name
+                raise BadValue(
+                    key, f"is beyond {_MOST:g} in size", "give a number that can be reckoned with"
+                )
+        return self
 
     @model_validator(mode="after")
     def _states_each_thing_in_one_way(self) -> Self:

@@ -5,10 +5,15 @@ from __future__ import annotations
 import math
 import os
 
-from harness.study.mistakes import Finding, KeyPath
+import numpy as np
+
+from harness.study.expand import Condition
+from harness.study.mistakes import ABSENT, Finding, KeyPath
 from harness.study.study import Study, study_error
 
 _GB = 1e9
+_BYTES_A_NUMBER = 8
+_TRIALS_TOGETHER = 100  # in a span, the least that is drawn at once
 
 
 def machine_memory() -> float:
@@ -27,6 +32,9 @@ def check_memory(study: Study) -> None:
     most = machine_memory()
     findings: dict[tuple[KeyPath, int], Finding] = {}
     for condition in study.conditions:
+        wrong = _beyond_scenes(condition, most)
+        if wrong is not None:
+            findings.setdefault((wrong.path, 0), wrong)
         for case in condition.cases:
             strategy, assumed = case.strategy, case.assumed
             n, m = assumed.target.state_size, assumed.sensor.measurement_size
@@ -39,6 +47,25 @@ def check_memory(study: Study) -> None:
                     findings.setdefault((path, count), finding)
     if findings:
         raise study_error(study, findings.values())
+
+
+def _beyond_scenes(condition: Condition, most: float) -> Finding | None:
+    """Say that the detections of a span of trials do not fit, if they don't."""
+    scene = condition.rules.scene
+    model = scene.sensor.clutter_model(scene.scan_times())
+    m = scene.sensor.measurement_size
+    volumes = np.prod(2.0 * model.boxes[:, m : 2 * m], axis=1)
+    a_scan = float(volumes @ model.boxes[:, -1] + model.bumps[:, -1].sum())
+    needed = a_scan * scene.scan_count * _TRIALS_TOGETHER * _BYTES_A_NUMBER * m
+    if needed <= most:
+        return None
+    return Finding(
+        ("scene", "sensor"),
+        f"draws {a_scan:.3g} false detections a scan, which take {needed / _GB:,.3g} GB for "
+        f"{_TRIALS_TOGETHER} trials, and this machine has {most / _GB:,.3g}",
+        "lessen the clutter, the region or the scans",
+        ABSENT,
+    )
 
 
 def _beyond_memory(

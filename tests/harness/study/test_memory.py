@@ -57,3 +57,17 @@ def test_swept_particles_are_told_at_their_sweep(study_file, table):
 def test_a_particle_takes_as_much_as_is_reckoned_for_it():
     few, many = (sum(part.nbytes for part in cloud_for(4, 2, count, 30)) for count in (10, 110))
     assert many - few == 100 * bytes_per_particle(4, 2)
+
+
+@pytest.mark.usefixtures("one_megabyte")
+def test_clutter_beyond_memory_is_told_and_its_number_never_drawn(study_file):
+    path = study_file(("clutter_density_per_m2 = 2e-5", "clutter_per_scan = 1e12"))
+    (mistake,) = mistakes_in(path)
+    assert f"{path}:{line_of(path, '[scene.sensor]')}: scene.sensor: draws 1e+12 false" in str(
+        mistake
+    )
+
+
+def test_numbers_beyond_reckoning_are_mistakes(study_file):
+    with pytest.raises(StudyError, match=r"noise_sd_m = 1e\+308: is beyond 1e\+30 in size"):
+        load_study(study_file(("noise_sd_m = 4.0", "noise_sd_m = 1e308")))

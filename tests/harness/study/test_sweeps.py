@@ -190,8 +190,8 @@ MISTAKES = {
     ),
     "a range wider than numbers": (
         '"scene.target.start_position_m.0" = { from = -1e308, to = 1e308, count = 3 }',
-        '31: sweep."scene.target.start_position_m.0": has steps that are too large for a number; '
-        "bring its ends closer",
+        '31: sweep."scene.target.start_position_m.0".from = -1e+308: is beyond 1e+30 in size; '
+        "give a number that can be reckoned with",
     ),
     "a value that its key does not take": (
         '"scene.sensor.noise_sd_m" = [\n1.0,\n-2.0,\n3.0]',
