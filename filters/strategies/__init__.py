@@ -13,6 +13,7 @@ from filters.strategies.mixtures import (
 )
 from filters.strategies.particles import ParticleFilter
 from filters.strategies.pda import ProbabilisticDataAssociation
+from filters.strategies.point_mass import PointMassGrid
 from filters.strategies.rao_blackwellised import RaoBlackwellisedParticleFilter
 from filters.strategies.unreduced import UnreducedMixture
 
@@ -25,6 +26,7 @@ STRATEGIES = (
     RunnallsMixture,
     NScanMixture,
     UnreducedMixture,
+    PointMassGrid,
     ParticleFilter,
     RaoBlackwellisedParticleFilter,
     KnownAssociation,

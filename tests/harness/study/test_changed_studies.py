@@ -110,7 +110,7 @@ def test_what_is_given_is_not_followed_later(study):
             {"strategies.own": {"kind": "pdas"}},
             'strategies.own.kind = "pdas": is unknown; did you mean pda? there are '
             "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, pruned-mixture, "
-            "runnalls-mixture, n-scan-mixture, unreduced-mixture, "
+            "runnalls-mixture, n-scan-mixture, unreduced-mixture, point-mass-grid, "
             "particle-filter, rao-blackwellised-particle-filter, known-association",
         ),
     ],

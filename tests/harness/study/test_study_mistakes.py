@@ -14,7 +14,7 @@ REGION = "region_m = [[-400.0, 400.0], [-400.0, 400.0]]"
 PDA = 'kind = "pda"'
 KINDS = (
     "nearest-neighbour, most-probable-hypothesis, pda, gaussian-mixture, pruned-mixture, "
-    "runnalls-mixture, n-scan-mixture, unreduced-mixture, "
+    "runnalls-mixture, n-scan-mixture, unreduced-mixture, point-mass-grid, "
     "particle-filter, rao-blackwellised-particle-filter, known-association"
 )
 MOTIONS = (
