@@ -12,6 +12,7 @@ from filters.models.clutter.clutter_map import MeasurementSpace
 from filters.models.contract import MEASUREMENT_MATRIX, MEASUREMENT_OF
 from filters.models.ends import check_ends
 from filters.models.record import BadValue, Interval, NonNegative, Positive
+from filters.models.sensor.position_of import position_as_measured
 from filters.models.sensor.sensor import Sensor
 
 
@@ -51,6 +52,7 @@ class PositionSensor(Sensor):
 
     measure: ClassVar = position_of
     jacobian: ClassVar = position_jacobian
+    convert: ClassVar = position_as_measured
     linear: ClassVar = True
     components: ClassVar = ()  # one for each axis; they share their keys
     density_keys: ClassVar = (

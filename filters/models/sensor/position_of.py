@@ -15,6 +15,7 @@ from typing import Any
 
 from filters.compiled import helper, model_function
 from filters.models.contract import CONVERSION
+from filters.models.geometry import range_between
 from filters.models.over_range import table_value
 
 
@@ -22,6 +23,18 @@ from filters.models.over_range import table_value
 def no_position(parameters: Any, site: Any, measurement: Any, out: Any) -> float:
     """A measurement that fixes no position: nothing can be said."""
     return 0.0
+
+
+@model_function(CONVERSION)
+def position_as_measured(parameters: Any, site: Any, measurement: Any, out: Any) -> float:
+    """A measurement that is a position already; its noise may grow with range."""
+    m = measurement.shape[0]
+    factor = _range_noise_factor(parameters, m, range_between(m, measurement, site))
+    out[:] = 0.0
+    for axis in range(m):
+        out[0, axis] = measurement[axis]
+        out[axis + 1, axis] = (factor * parameters[axis]) ** 2
+    return 1.0
 
 
 @helper

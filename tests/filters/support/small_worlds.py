@@ -48,6 +48,7 @@ from filters.update import UpdateRules
 DENSITY_KEYS = ("clutter_density_per_m", "clutter_density_per_m2", "clutter_density_per_m3")
 NEVER = Ending(0, np.inf, 1)
 NO_REDUCTION = prune_merge_cap(0.0, 0.0, 500)
+BY_JACOBIAN, AT_MEAN = ByJacobian(), AtMean()
 
 
 class World(NamedTuple):
@@ -336,14 +337,22 @@ class LookInside(NamedTuple):
         return list(zip(*(part[:count] for part in self.room.mixture[:3]), strict=True))
 
 
-def look_inside(world, scans, gate_probability=1.0, reduction=NO_REDUCTION):
+def look_inside(
+    world,
+    scans,
+    gate_probability=1.0,
+    reduction=NO_REDUCTION,
+    *,
+    linearisation=BY_JACOBIAN,
+    detecting=AT_MEAN,
+):
     """Run the kernel on one trial, by default without reducing anything, and look inside."""
     prior = world.assumptions.prior
     n, m = len(prior.mean), scans.detections.shape[1]
     strategy = HypothesisStrategy(
         reduction.compiled(n),
         reduction.settings,
-        UpdateRules(gate_of(gate_probability, m), ByJacobian(), AtMean()),
+        UpdateRules(gate_of(gate_probability, m), linearisation, detecting),
         OneMode(world.assumptions.models.motion),
         CERTAIN,
         NEVER,
