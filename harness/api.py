@@ -115,9 +115,13 @@ def schema_text() -> str:
     return json.dumps(study_json_schema(), indent=2)
 
 
-def closing_words(outcome: RunOutcome, width: int = 100) -> str:
-    """What a run ends with: the comparison table, and the paths of what was written."""
-    written = sorted(path for path in outcome.folder.rglob("*") if path.is_file())
+def closing_words(outcome: RunOutcome, drawn: Sequence[Path], width: int = 100) -> str:
+    """What a run ends with: the comparison table, and the paths of what was written.
+
+    drawn   figures of this run
+    """
+    tables = (path for path in outcome.folder.iterdir() if path.is_file())
+    written = sorted([*tables, *drawn])
     paths = "\n".join(f"  {path}" for path in written)
     return f"{as_text(overall_table(outcome.results), width)}\n\nwritten:\n{paths}"
 

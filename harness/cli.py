@@ -77,9 +77,8 @@ def run(
     finally:
         line.close()
     if not outcome.results.summary.empty:
-        if figures:
-            api.draw(outcome.folder)
-        print(api.closing_words(outcome, _width()))
+        drawn = api.draw(outcome.folder) if figures else []
+        print(api.closing_words(outcome, drawn, _width()))
     for one in outcome.set_aside:
         _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
     if outcome.set_aside:
@@ -91,7 +90,11 @@ def run(
 def show(
     path: Anything,
     metric: Annotated[
-        list[str] | None, typer.Option(help="A metric of summary.csv; may be repeated.")
+        list[str] | None,
+        typer.Option(
+            help="A column of summary.csv, such as track_loss_rate, rmse_position, anees or gospa; "
+            "may be repeated."
+        ),
     ] = None,
     rows: Annotated[
         list[str] | None, typer.Option(help="A swept key, or strategy; may be repeated.")

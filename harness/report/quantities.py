@@ -116,7 +116,8 @@ def metric_quantity(results: Results, metric: str) -> Quantity:
 def nearest_names(word: str, names: Iterable[str], kind: str) -> str:
     """The remedy for a wrong name: the names close to it, or all there are."""
     names = list(names)
-    close = difflib.get_close_matches(word, names, n=3)
+    holding = [name for name in names if word in name]
+    close = holding[:3] or difflib.get_close_matches(word, names, n=3)
     if close:
         return f"did you mean {' or '.join(close)}?"
     return f"the {kind} are {', '.join(names)}" if names else f"there are no {kind}"

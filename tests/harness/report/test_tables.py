@@ -109,6 +109,11 @@ def test_a_case_that_is_missing_leaves_its_cell_empty(study):
     ("metric", "message"),
     [
         ("rmse_positon", r"no metric 'rmse_positon'; did you mean rmse_position"),
+        ("track_loss", r"no metric 'track_loss'; did you mean track_loss_rate\?"),
+        (
+            "rmse",
+            r"no metric 'rmse'; did you mean rmse_position or rmse_velocity or rmse_position_all",
+        ),
         ("track_loss_rate_low", r"no metric 'track_loss_rate_low'; did you mean track_loss_rate"),
         ("best_in", r"no metric 'best_in'; the metrics are trials, lost, failed, "),
         ("strategy", r"no metric 'strategy'"),
