@@ -13,7 +13,14 @@ from harness.evidence.results import Results
 from harness.evidence.run import run_plan
 from harness.report.figures import all_figures, figures_against, save_figure
 from harness.report.figures.default_set import main_key
-from harness.report.folder import ResultsError, claim_folder, load_results, write_results
+from harness.report.folder import (
+    ResultsError,
+    claim_folder,
+    keys_of_results,
+    load_results,
+    write_results,
+)
+from harness.report.reclaimed import reclaim_text
 from harness.report.tables.comparison import DEFAULT_METRICS, comparison_table
 from harness.report.tables.csv_text import as_csv
 from harness.report.tables.latex import as_latex
@@ -26,7 +33,8 @@ from harness.study.memory import check_memory
 from harness.study.own_sensors import find_own_files, own_sensors, try_own_sensors
 from harness.study.study import Study, load_study
 from harness.trials.driver import Progress, SetAside
-from harness.trials.store import locked_store
+from harness.trials.reclaim import look_over, reclaim
+from harness.trials.store import StoreError, locked_store
 from harness.trials.warm_up import telling_if_slow, warm_up
 from harness.trials.workers import local_workers
 
@@ -108,6 +116,35 @@ def check_study(path: str | Path, tell: Callable[[str], None] = lambda words: No
         return outlook_text(Outlook(study, (), ()))
     with telling_if_slow(_telling(tell)):
         return outlook_text(look_ahead(study))
+
+
+def reclaim_store(
+    studies: Sequence[str | Path], store: str | Path | None = None, *, remove: bool = False
+) -> str:
+    """Say what a store holds that nobody needs, and remove it if asked to.
+
+    Needed is what the results in the folders beside the store were made from, and what the studies
+    named would take from it as they are now.
+
+    store       default results/.store
+    raises      StudyError, StoreError, ResultsError; OSError: the store can't be written
+    """
+    folder = RESULTS / ".store" if store is None else Path(store)
+    if not folder.is_dir():
+        raise StoreError(f"{folder}: there is no store; name it with --store")
+    needed = {
+        case.key
+        for study in studies
+        for condition in keyed_conditions(load_study(study))
+        for case in condition.cases
+    }
+    for beside in folder.parent.iterdir():
+        needed |= keys_of_results(beside)
+    with locked_store(folder) as opened:
+        found = look_over(opened, needed)
+        if remove:
+            reclaim(opened, needed)
+    return reclaim_text(found, folder, remove)
 
 
 def schema_text() -> str:

@@ -25,6 +25,9 @@ app = typer.Typer(
     context_settings={"help_option_names": ["-h", "--help"]},
 )
 
+store_app = typer.Typer(help="Look after the store of trials.", no_args_is_help=True)
+app.add_typer(store_app, name="store")
+
 StudyFile = Annotated[Path, typer.Argument(help="A study file.", metavar="STUDY")]
 Anything = Annotated[
     Path, typer.Argument(help="A results folder, or a study that was run.", metavar="PATH")
@@ -131,6 +134,25 @@ def draw(
 
     for written in api.draw(path, form or ["svg"], metric, against, into):
         print(written)
+
+
+@store_app.command("reclaim")
+def reclaim(
+    studies: Annotated[
+        list[Path] | None,
+        typer.Argument(
+            help="Studies whose trials are kept, finished or not.", metavar="[STUDY]..."
+        ),
+    ] = None,
+    store: Annotated[
+        Path | None, typer.Option(help="Folder of the store [default: results/.store].")
+    ] = None,
+    remove: Annotated[bool, typer.Option("--remove", help="Remove what is not needed.")] = False,
+) -> None:
+    """Show what no results folder beside the store and no study named needs; remove it if asked."""
+    from harness import api
+
+    print(api.reclaim_store(studies or [], store, remove=remove))
 
 
 def main() -> int:

@@ -105,6 +105,14 @@ def load_results(folder: Path) -> Results:
     return Results(summary, scans, manifest["study"], manifest, folder, calibration)
 
 
+def keys_of_results(folder: Path) -> set[str]:
+    """Keys of the cases that a results folder was made from; none if it is no results folder."""
+    try:
+        return {str(case["key"]) for case in _read_manifest(folder)["cases"]}
+    except (ResultsError, KeyError, TypeError):
+        return set()
+
+
 def _read_manifest(folder: Path) -> dict[str, Any]:
     path = folder / MANIFEST
     if not path.is_file():

@@ -92,10 +92,15 @@ class Store:
         table = pa.Table.from_pylist([_row(result) for result in self._pending], schema=_SCHEMA)
         content = io.BytesIO()
         pq.write_table(table, content, compression="zstd")
-        path = self.folder / f"segment-{time.time_ns():020d}-{_digest(content.getvalue())}.parquet"
-        write_whole(path, lambda beside: beside.write_bytes(content.getvalue()))
+        path = self.write_segment(content.getvalue())
         self._place_of |= {(result.key, result.span): path for result in self._pending}
         self._pending.clear()
+
+    def write_segment(self, content: bytes) -> Path:
+        """Write a segment, complete or not at all; its name tells its digest."""
+        path = self.folder / f"segment-{time.time_ns():020d}-{_digest(content)}.parquet"
+        write_whole(path, lambda beside: beside.write_bytes(content))
+        return path
 
     def read(self, wanted: dict[str, list[Span]]) -> dict[str, list[SpanResult]]:
         """Results of the cases and spans wanted, in the spans' order; absent ones are left out."""
