@@ -68,7 +68,7 @@ def _run_trial(
     prior_mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
     start_from(n, prior_mean, prior.covariance, cloud)
     spread_evenly(cloud)
-    cloud.log_evidence[0] = 0.0
+    cloud.step[0].log_evidence = 0.0
     empty_scans = 0
     for k in range(scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)

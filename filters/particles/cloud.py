@@ -19,34 +19,21 @@ class Cloud(NamedTuple):
     states: Any  # (particles, n)
     moved: Any  # (particles, n) expected before the noise; room for copies when resampling
     weights: Any  # (particles,), summing to one
-    measurements: Any  # (particles, m) expected of each
-    detected: Any  # (particles,) PD of each
-    likelihoods: Any  # (particles,) of the scan, over the ratio below, scaled alike
-    log_ratios: Any  # (particles,) ln of proposal over motion where each was drawn, see proposal
+    marks: Any  # (particles,) what a scan makes of each, see _room_for_marks
     sources: Any  # (particles,) int64, see resampling
-    near: Any  # (most detections,) int64: detections that some particle, or one, could explain
-    log_clutter: Any  # (most detections,)
-    log_terms: Any  # (most detections,) of one particle's mixture, see proposal
-    log_evidence: Any  # (1,) ln of the product over a trial's scans of the mean likelihood
+    detections: Any  # (most detections,) see _room_for_detections
     step: Any  # see _room_for_step
 
 
 def cloud_for(n: int, m: int, particles: int, most_detections: int) -> Cloud:
     """Working memory for a number of particles and of detections in a scan."""
-    most = max(1, most_detections)
     return Cloud(
         np.empty((particles, n)),
         np.empty((particles, n)),
         np.empty(particles),
-        np.empty((particles, m)),
-        np.empty(particles),
-        np.empty(particles),
-        np.empty(particles),
+        _room_for_marks(m, particles),
         np.empty(particles, np.int64),
-        np.empty(most, np.int64),
-        np.empty(most),
-        np.empty(most),
-        np.empty(1),
+        _room_for_detections(most_detections),
         _room_for_step(n, m),
     )
 
@@ -56,11 +43,37 @@ def bytes_per_particle(n: int, m: int) -> int:
     return 8 * (2 * n + m + 5)
 
 
+def _room_for_marks(m: int, particles: int) -> np.ndarray:
+    """Room for what a scan makes of each particle."""
+    return zeroed_records(
+        particles,
+        [
+            ("measurement", float, (m,)),  # expected
+            ("detected", float),  # PD
+            ("likelihood", float),  # of the scan, over the ratio below, scaled alike
+            ("log_ratio", float),  # ln of proposal over motion where it was drawn, see proposal
+        ],
+    )
+
+
+def _room_for_detections(most_detections: int) -> np.ndarray:
+    """Room for a scan's detections, and for a list of those that matter."""
+    return zeroed_records(
+        max(1, most_detections),
+        [
+            ("log_clutter", float),
+            ("listed", np.int64),  # entry k holds the k-th detection that could be explained
+            ("log_term", float),  # of the k-th, in one particle's mixture, see proposal
+        ],
+    )
+
+
 def _room_for_step(n: int, m: int) -> np.ndarray:
     """Room for moving and weighing one particle, and for what all share: one record."""
     return zeroed_records(
         1,
         [
+            ("log_evidence", float),  # of the scans so far, over that of clutter alone
             ("disturbance", float, (n, n)),  # covariance of the noise that moves a particle
             ("root", float, (n, n)),  # L of that covariance L L'
             ("filled_for", float),  # s, the interval of these two; kept while the motion is linear
@@ -87,7 +100,7 @@ def _room_for_step(n: int, m: int) -> np.ndarray:
 @helper
 def log_ratio_of(proposal: int, cloud: Cloud, i: int) -> float:
     """Return ln of proposal over motion where a particle was drawn; the motion's own is 0."""
-    return cloud.log_ratios[i] if proposal == DETECTIONS else 0.0
+    return cloud.marks[i].log_ratio if proposal == DETECTIONS else 0.0
 
 
 @helper

@@ -31,14 +31,14 @@ def has_something_near(
     for i in range(cloud.weights.shape[0]):
         weight = cloud.weights[i] * math.exp(-log_ratio_of(proposal, cloud, i))
         total += weight
-        difference(m, sensor.periods, cloud.measurements[i], reference, offset)
+        difference(m, sensor.periods, cloud.marks[i].measurement, reference, offset)
         for a in range(m):
             mean[a] += weight * offset[a]
     for a in range(m):
         mean[a] /= total
     for i in range(cloud.weights.shape[0]):
         weight = cloud.weights[i] * math.exp(-log_ratio_of(proposal, cloud, i)) / total
-        difference(m, sensor.periods, cloud.measurements[i], reference, offset)
+        difference(m, sensor.periods, cloud.marks[i].measurement, reference, offset)
         sensor.noise(sensor.parameters, scan.site, cloud.states[i], step.noise[:])
         for a in range(m):
             for b in range(a + 1):

@@ -97,11 +97,11 @@ def propose(
                 value += step.root[row, k] * step.normals[k]
             state[row] = value
         if proposal == DETECTIONS:
-            cloud.log_ratios[i] = 0.0
+            cloud.marks[i].log_ratio = 0.0
             if i == 0 or not same_gain:
                 _prepare_gain(n, m, sensor, scan, moved, cloud)
             if step.usable:
-                cloud.log_ratios[i] = _look_at_detections(
+                cloud.marks[i].log_ratio = _look_at_detections(
                     n, m, models, scan, no_clutter, moved, state, numbers, cloud
                 )
 
@@ -167,25 +167,25 @@ def _list_explaining(
     peak: float,
     cloud: Cloud,
 ) -> tuple[int, float]:
-    """List the detections that matter to a particle's mixture, with ln of w_j in `log_terms`.
+    """List the detections that matter to a particle's mixture, with ln of w_j in `log_term`.
 
     peak        ln of PD times the density of the innovation at zero
     returns     how many, and the greatest term
     """
-    step, near, terms = cloud.step[0], cloud.near, cloud.log_terms
+    step, table = cloud.step[0], cloud.detections
     top = log_missed
     for j in range(scan.detections.shape[0]):
         difference(m, sensor.periods, scan.detections[j], step.expected, step.differences[0])
         half = 0.5 * squared_distance(
             m, step.innovation_factor, step.differences[0], step.differences[1]
         )
-        terms[j] = peak - half - cloud.log_clutter[j]
-        top = max(top, terms[j])
+        table[j].log_term = peak - half - table[j].log_clutter
+        top = max(top, table[j].log_term)
     count = 0
     for j in range(scan.detections.shape[0]):
-        if terms[j] > top - NO_TRACE:
-            near[count] = j
-            terms[count] = terms[j]
+        if table[j].log_term > top - NO_TRACE:
+            table[count].listed = j
+            table[count].log_term = table[j].log_term
             count += 1
     return count, top
 
@@ -205,12 +205,12 @@ def _fill_given_state(
     """Replace ln of w_j by ln of w_j N_j(x) / p(x), x being the state."""
     step = cloud.step[0]
     for place in range(count):
-        j = cloud.near[place]
+        j = cloud.detections[place].listed
         _innovation_left(n, m, sensor, scan.detections[j], moved, state, cloud)
         half = 0.5 * squared_distance(
             m, step.noise_factor, step.differences[0], step.differences[1]
         )
-        cloud.log_terms[place] = peak - half - cloud.log_clutter[j]
+        cloud.detections[place].log_term = peak - half - cloud.detections[j].log_clutter
 
 
 @helper
@@ -231,10 +231,10 @@ def _log_sum(log_missed: float, count: int, cloud: Cloud) -> float:
     """Logarithm of the sum of the first terms and the one for a missed target."""
     top = log_missed
     for place in range(count):
-        top = max(top, cloud.log_terms[place])
+        top = max(top, cloud.detections[place].log_term)
     total = math.exp(log_missed - top)
     for place in range(count):
-        total += math.exp(cloud.log_terms[place] - top)
+        total += math.exp(cloud.detections[place].log_term - top)
     return top + math.log(total)
 
 
@@ -247,8 +247,8 @@ def _choose(log_missed: float, log_total: float, count: int, numbers: Numbers, c
     for place in range(count):
         if place_left < 0.0:
             break
-        chosen = cloud.near[place]
-        place_left -= (1.0 - _MOTION_SHARE) * math.exp(cloud.log_terms[place] - log_total)
+        chosen = cloud.detections[place].listed
+        place_left -= (1.0 - _MOTION_SHARE) * math.exp(cloud.detections[place].log_term - log_total)
     return chosen
 
 

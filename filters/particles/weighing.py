@@ -33,18 +33,18 @@ def measure_particles(m: int, models: Models, scan: Scan, cloud: Cloud) -> None:
     sensor, detection, step = models.sensor, models.detection, cloud.step[0]
     box, offset = step.box, step.differences[0]
     for i in range(cloud.weights.shape[0]):
-        state, measurement = cloud.states[i], cloud.measurements[i]
-        sensor.measure(sensor.parameters, scan.site, state, measurement)
-        cloud.detected[i] = detection.probability(detection.parameters, scan.site, state)
+        state, mark = cloud.states[i], cloud.marks[i]
+        sensor.measure(sensor.parameters, scan.site, state, mark.measurement[:])
+        mark.detected = detection.probability(detection.parameters, scan.site, state)
         if i == 0 or not sensor.same_noise:
             sensor.noise(sensor.parameters, scan.site, state, step.noise[:])
         if i == 0:
             for a in range(m):
-                box[0, a] = measurement[a]
+                box[0, a] = mark.measurement[a]
                 box[1, a] = 0.0
                 box[2, a] = 0.0
                 box[3, a] = 0.0
-        difference(m, sensor.periods, measurement, box[0], offset)
+        difference(m, sensor.periods, mark.measurement, box[0], offset)
         for a in range(m):
             box[1, a] = min(box[1, a], offset[a])
             box[2, a] = max(box[2, a], offset[a])
@@ -57,15 +57,16 @@ def fill_log_clutter(models: Models, scan: Scan, cloud: Cloud) -> bool:
 
     Those then outweigh all else, as in the limit from above: they get 0, the others infinity.
     """
-    clutter, log_clutter = models.clutter, cloud.log_clutter
+    clutter, table = models.clutter, cloud.detections
     none_somewhere = False
     for j in range(scan.detections.shape[0]):
         intensity = clutter.intensity(clutter.parameters, scan.site, scan.detections[j])
-        log_clutter[j] = log_or_minus_infinity(intensity)
-        none_somewhere = none_somewhere or log_clutter[j] == -math.inf
+        table[j].log_clutter = log_or_minus_infinity(intensity)
+        none_somewhere = none_somewhere or table[j].log_clutter == -math.inf
     if none_somewhere:
         for j in range(scan.detections.shape[0]):
-            log_clutter[j] = 0.0 if log_clutter[j] == -math.inf else math.inf
+            is_none = table[j].log_clutter == -math.inf
+            table[j].log_clutter = 0.0 if is_none else math.inf
     return none_somewhere
 
 
@@ -103,8 +104,8 @@ def _select_near(m: int, models: Models, scan: Scan, cloud: Cloud) -> tuple[int,
     step = cloud.step[0]
     least_detected, most_detected = 1.0, 0.0
     for i in range(cloud.weights.shape[0]):
-        least_detected = min(least_detected, cloud.detected[i])
-        most_detected = max(most_detected, cloud.detected[i])
+        least_detected = min(least_detected, cloud.marks[i].detected)
+        most_detected = max(most_detected, cloud.marks[i].detected)
     peak = _prepare_noise(m, models, scan, cloud.states[0], step)
     leaves_trace = log_or_minus_infinity(1.0 - most_detected) - NO_TRACE
     without_clutter = fill_log_clutter(models, scan, cloud) and most_detected > 0.0
@@ -113,14 +114,14 @@ def _select_near(m: int, models: Models, scan: Scan, cloud: Cloud) -> tuple[int,
     count = 0
     detections = scan.detections.shape[0]
     for j in range(detections):
-        if cloud.log_clutter[j] == math.inf:
+        if cloud.detections[j].log_clutter == math.inf:
             continue
         if may_skip:
             height = math.log(detections) + log_or_minus_infinity(most_detected) + peak
             bound = 0.5 * _squared_distance_to_box(m, models.sensor, scan.detections[j], step)
-            if height - cloud.log_clutter[j] - bound < leaves_trace:
+            if height - cloud.detections[j].log_clutter - bound < leaves_trace:
                 continue
-        cloud.near[count] = j
+        cloud.detections[count].listed = j
         count += 1
     log_missed = -math.inf if without_clutter else log_or_minus_infinity(1.0 - least_detected)
     return count, log_missed
@@ -150,28 +151,27 @@ def _weigh(
     for i in range(cloud.weights.shape[0]):
         if not sensor.same_noise:
             peak = _prepare_noise(m, models, scan, cloud.states[i], step)
+        mark = cloud.marks[i]
         log_ratio = log_ratio_of(proposal, cloud, i)
         own_shift = shift - log_ratio
         if own_shift != scaled_by:  # the same for all that the motion alone moved
             scale = math.exp(own_shift) if log_missed > -math.inf else 0.0
             scaled_by = own_shift
-        detected = cloud.detected[i]
+        detected = mark.detected
         found = 0.0
         for place in range(near):
-            j = cloud.near[place]
-            difference(
-                m, sensor.periods, scan.detections[j], cloud.measurements[i], step.differences[0]
-            )
+            j = cloud.detections[place].listed
+            difference(m, sensor.periods, scan.detections[j], mark.measurement, step.differences[0])
             half = 0.5 * squared_distance(
                 m, step.noise_factor, step.differences[0], step.differences[1]
             )
-            exponent = peak - cloud.log_clutter[j] - half
+            exponent = peak - cloud.detections[j].log_clutter - half
             if cloud.weights[i] > 0.0:
                 highest = max(highest, exponent - log_ratio)
             if exponent + own_shift > -_UNDERFLOW:
                 found += math.exp(exponent + own_shift)
         likelihood = (1.0 - detected) * scale + detected * found
-        cloud.likelihoods[i] = likelihood
+        mark.likelihood = likelihood
         total += cloud.weights[i] * likelihood
     return total, highest
 
@@ -203,9 +203,9 @@ def weigh_by_scan(m: int, proposal: int, models: Models, scan: Scan, cloud: Clou
         shift = -max(highest, _highest_missed(proposal, log_missed, cloud))
         total, _ = _weigh(m, proposal, models, scan, near, log_missed, shift, cloud)
     if not total > 0.0:
-        cloud.log_evidence[0] = -math.inf
+        cloud.step[0].log_evidence = -math.inf
         return False
     for i in range(cloud.weights.shape[0]):
-        cloud.weights[i] *= cloud.likelihoods[i] / total
-    cloud.log_evidence[0] += math.log(total) - shift
+        cloud.weights[i] *= cloud.marks[i].likelihood / total
+    cloud.step[0].log_evidence += math.log(total) - shift
     return True

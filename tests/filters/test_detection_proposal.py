@@ -77,7 +77,7 @@ def test_weights_divide_by_the_whole_mixture(scan, PD, clutter, noise_sd):
     weights = np.exp(expected - logsumexp(expected))
     np.testing.assert_allclose(cloud.weights, weights, rtol=1e-6, atol=1e-12)
     evidence = logsumexp(expected) - math.log(len(expected))
-    np.testing.assert_allclose(cloud.log_evidence[0], evidence, rtol=1e-9, atol=1e-6)
+    np.testing.assert_allclose(cloud.step["log_evidence"][0], evidence, rtol=1e-9, atol=1e-6)
 
 
 def effective_share(cloud):

@@ -278,7 +278,7 @@ def test_the_evidence_is_unbiased(proposal, variant):
     ratios = np.empty(1500)
     for seed in range(len(ratios)):
         _, cloud = run_particles(world, scans, 50, first_trial=seed, **settings)
-        ratios[seed] = math.exp(cloud.log_evidence[0] - exact)
+        ratios[seed] = math.exp(cloud.step["log_evidence"][0] - exact)
     standard_error = ratios.std(ddof=1) / math.sqrt(len(ratios))
     assert standard_error < 0.03
     assert abs(ratios.mean() - 1) < 4 * standard_error
