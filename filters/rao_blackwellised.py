@@ -13,7 +13,6 @@ for multiple target tracking, here for one target.
 from __future__ import annotations
 
 import functools
-import math
 from collections.abc import Callable
 from typing import Any, NamedTuple
 
@@ -65,7 +64,7 @@ class Sampling(NamedTuple):
     weights: Any  # (particles,) after a scan, summing to one
     chosen: Any  # (particles,) int64: row of each in the table of hypotheses
     sources: Any  # (particles,) int64, see resampling
-    log_evidence: Any  # (1,) ln of the product over a trial's scans of the summed hypotheses
+    log_evidence: Any  # (1,) of the trial's scans so far, over that of clutter alone
 
 
 def room_for_sampling(particles: int) -> Sampling:
@@ -129,15 +128,6 @@ def _sample_associations(
 
 
 @helper
-def _log_evidence(table: Any, rows: int) -> float:
-    """ln of the sum of the hypotheses' weights before they were normalised."""
-    for h in range(rows):
-        if table[h].weight > 0.0:
-            return table[h].log_weight - math.log(table[h].weight)
-    return -math.inf
-
-
-@helper
 def _run_trial(
     n: int,
     m: int,
@@ -166,7 +156,7 @@ def _run_trial(
     for k in range(scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
         open_at(numbers, first_trial + trial, STRATEGY, k)
-        rows, predicted, _ = explain_scan(
+        rows, predicted, log_total = explain_scan(
             n, m, models, strategy.rules, strategy.modes, scan, particles, k == 0, room
         )
         nothing_in_gate = rows == predicted
@@ -175,8 +165,7 @@ def _run_trial(
         tracks.scans_run[trial] += 1
         if nothing_in_gate and must_be_detected(models, scan, hypotheses, rows):
             tracks.impossible[trial] += 1
-            sampling.log_evidence[0] = -math.inf
-        sampling.log_evidence[0] += _log_evidence(hypotheses.table, rows)
+        sampling.log_evidence[0] += log_total
 
         estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
         _moments(n, hypotheses, rows, estimate, spread)

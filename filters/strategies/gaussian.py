@@ -47,6 +47,10 @@ class GaussianStrategy(Strategy):
     """Keep a detection probability that varies inside the integral, by so many Gauss-Hermite points
     along each axis of the state; by default it is taken at the mean."""
 
+    def kernel_choice(self) -> tuple[object, ...]:
+        """How a component meets sensor and detection probability."""
+        return (type(self.linearisation), self.detection_points_per_axis is None)
+
     def reduction(self) -> Reduction:
         """How the hypotheses of a scan become few components again."""
         raise NotImplementedError
