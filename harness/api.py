@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from harness.evidence.outlook import Outlook, look_ahead, outlook_text
-from harness.evidence.plans import FixedCount, keyed_conditions
+from harness.evidence.plans import FixedCount, Part, keyed_conditions
 from harness.evidence.results import Results
 from harness.evidence.run import run_plan
 from harness.report.figures import all_figures, figures_against, save_figure
@@ -32,7 +32,8 @@ from harness.study.json_schema import study_json_schema
 from harness.study.memory import check_memory
 from harness.study.own_sensors import find_own_files, own_sensors, try_own_sensors
 from harness.study.study import Study, load_study
-from harness.trials.driver import Progress, SetAside
+from harness.trials.driver import Progress, SetAside, drive
+from harness.trials.join import Joined, join
 from harness.trials.reclaim import look_over, reclaim
 from harness.trials.store import StoreError, locked_store
 from harness.trials.warm_up import telling_if_slow, warm_up
@@ -100,6 +101,67 @@ def run_study(
         results, aside = run_plan(study, plan, opened, processes, watch)
         write_results(results, folder)
     return RunOutcome(replace(results, folder=folder), folder, aside, opened.damaged)
+
+
+@dataclass(frozen=True)
+class PartOutcome:
+    """What came of running a part of a study."""
+
+    store: Path
+    trials: int  # of the part that were missing
+    set_aside: list[SetAside]
+
+
+def run_part(
+    study: Study | str | Path,
+    number: int,
+    of: int,
+    *,
+    store: str | Path | None = None,
+    workers: int | None = None,
+    watch: Callable[[Progress], None] = lambda progress: None,
+    tell: Callable[[str], None] = lambda words: None,
+) -> PartOutcome:
+    """Run one of several parts of a study into a store; no results are made of it.
+
+    Parts are the same on every machine, as equal as spans of 100 trials allow, and together they
+    are the study. Their stores are brought together by `join_stores`; run the study then.
+
+    number, of      part number (from 1) of so many
+    raises          as run_study; ChoiceError: there is no such part
+    """
+    if not 1 <= number <= of:
+        raise ChoiceError(f"there is no part {number} of {of}; parts go from 1 to their number")
+    study = study if isinstance(study, Study) else load_study(study)
+    check_memory(study)
+    try_own_sensors(study)
+    folder = RESULTS / ".store" if store is None else Path(store)
+    with locked_store(folder) as opened:
+        for path in opened.damaged:
+            tell(f"{path}: damaged; its trials are run again")
+        processes = local_workers(workers)
+        plan = FixedCount(
+            keyed_conditions(study),
+            study.seed,
+            study.trials,
+            processes.in_flight,
+            Part(number, of),
+        )
+        missing = plan.next_tasks(lambda key, span: (key, span) in opened)
+        warm_up(missing, _telling(tell))
+        aside = drive(plan, opened, processes, watch)
+    return PartOutcome(folder, sum(task.trials for task in missing), aside)
+
+
+def join_stores(others: Sequence[str | Path], store: str | Path | None = None) -> Joined:
+    """Copy what other stores hold into one.
+
+    others      stores, or folders with a `.store` in them
+    store       default results/.store
+    raises      StoreError: one of them is none, or can't be used; OSError: the disk is full
+    """
+    with locked_store(RESULTS / ".store" if store is None else Path(store)) as opened:
+        return join(opened, [Path(other) for other in others])
 
 
 def check_study(path: str | Path, tell: Callable[[str], None] = lambda words: None) -> str:

@@ -67,11 +67,18 @@ def run(
         int | None, typer.Option(min=1, help="Processes [default: one a core].")
     ] = None,
     figures: Annotated[bool, typer.Option(help="Draw figures too.")] = True,
+    part: Annotated[
+        str | None,
+        typer.Option(help="Run one part into the store, such as 3/10; see store join."),
+    ] = None,
 ) -> None:
     """Run what is missing of a study; write and show its comparison."""
     from harness import api
     from harness.report.progress import ProgressLine
 
+    if part is not None:
+        _run_part(study, part, store, workers)
+        return
     line = ProgressLine()
     try:
         outcome = api.run_study(
@@ -86,6 +93,27 @@ def run(
         _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
     if outcome.set_aside:
         _tell("the results lack these trials; run the study again to try them anew")
+        raise typer.Exit(BROKEN_OFF)
+
+
+def _run_part(study: Path, part: str, store: Path | None, workers: int | None) -> None:
+    from harness import api
+    from harness.report.progress import ProgressLine
+
+    number, slash, of = part.partition("/")
+    if not (slash and number.isdecimal() and of.isdecimal()):
+        raise typer.BadParameter(f"--part {part}: write it as 3/10, part 3 of 10")
+    line = ProgressLine()
+    try:
+        outcome = api.run_part(
+            study, int(number), int(of), store=store, workers=workers, watch=line, tell=_tell
+        )
+    finally:
+        line.close()
+    print(f"part {number} of {of}: {outcome.trials:,} trials run, in {outcome.store}")
+    if outcome.set_aside:
+        for one in outcome.set_aside:
+            _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
         raise typer.Exit(BROKEN_OFF)
 
 
@@ -153,6 +181,25 @@ def reclaim(
     from harness import api
 
     print(api.reclaim_store(studies or [], store, remove=remove))
+
+
+@store_app.command("join")
+def join(
+    others: Annotated[
+        list[Path],
+        typer.Argument(help="Stores, or folders with a .store in them.", metavar="FOLDER..."),
+    ],
+    store: Annotated[
+        Path | None, typer.Option(help="Store to bring them to [default: results/.store].")
+    ] = None,
+) -> None:
+    """Bring together what parts of a study stored apart; run the study then."""
+    from harness import api
+
+    joined = api.join_stores(others, store)
+    for path in joined.damaged:
+        _tell(f"{path}: damaged and left out; run its part again")
+    print(f"{joined.added:,} segments added, {joined.there_already:,} were there already")
 
 
 def main() -> int:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import NamedTuple
 
 from harness.study.expand import Case, Condition
 from harness.study.study import Study
@@ -67,6 +68,20 @@ def _gap_reference(condition: Condition) -> Case | None:
     return next(case for case in condition.cases if case.name == gap.reference)
 
 
+class Part(NamedTuple):
+    """One of several shares of a study's trials, for machines that work apart."""
+
+    number: int  # from 1
+    of: int
+
+    def holds(self, place: int) -> bool:
+        """Whether a span, by its place among all, belongs to it."""
+        return place % self.of == self.number - 1
+
+
+WHOLE = Part(1, 1)
+
+
 @dataclass(frozen=True)
 class FixedCount:
     """The same number of trials for every condition."""
@@ -75,14 +90,18 @@ class FixedCount:
     seed: int
     trials: int
     workers: int
+    part: Part = WHOLE
 
     def next_tasks(self, settled: Settled) -> list[Task]:
         """All that is missing, in one round."""
         missing: list[tuple[KeyedCondition, tuple[TaskCase, ...], list[Span]]] = []
         claimed: set[tuple[str, Span]] = set()  # conditions may share a case
-        for condition in self.conditions:
+        every_span = spans_of(self.trials)
+        for number, condition in enumerate(self.conditions):
             groups: dict[tuple[str, ...], tuple[tuple[TaskCase, ...], list[Span]]] = {}
-            for span in spans_of(self.trials):
+            for place, span in enumerate(every_span, number * len(every_span)):
+                if not self.part.holds(place):
+                    continue
                 cases = tuple(
                     case
                     for case in condition.cases

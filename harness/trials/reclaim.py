@@ -5,13 +5,12 @@ from __future__ import annotations
 import io
 from collections.abc import Set
 from dataclasses import dataclass
-from pathlib import Path
 
 import pyarrow as pa
 import pyarrow.compute as pc
 import pyarrow.parquet as pq
 
-from harness.trials.store import Store
+from harness.trials.store import Store, segments_in
 
 
 @dataclass(frozen=True)
@@ -30,7 +29,7 @@ def look_over(store: Store, needed: Set[str]) -> Reclaimable:
     """See what a store could do without; needed: keys of cases."""
     size = unneeded = 0.0
     cases: set[str] = set()
-    for path in _segments(store):
+    for path in segments_in(store.folder):
         size += path.stat().st_size
         if path in store.damaged:
             unneeded += path.stat().st_size
@@ -40,7 +39,7 @@ def look_over(store: Store, needed: Set[str]) -> Reclaimable:
         share = sum(key not in needed for key in keys) / max(1, len(keys))
         unneeded += share * path.stat().st_size
     return Reclaimable(
-        len(_segments(store)),
+        len(segments_in(store.folder)),
         int(size),
         len(cases),
         len(cases - needed),
@@ -56,7 +55,7 @@ def reclaim(store: Store, needed: Set[str]) -> None:
 
     raises      OSError: the disk is full, or the store can't be written
     """
-    for path in _segments(store):
+    for path in segments_in(store.folder):
         if path in store.damaged:
             path.unlink()
             continue
@@ -69,7 +68,3 @@ def reclaim(store: Store, needed: Set[str]) -> None:
             pq.write_table(kept, content, compression="zstd")
             store.write_segment(content.getvalue())
         path.unlink()
-
-
-def _segments(store: Store) -> list[Path]:
-    return sorted(store.folder.glob("segment-*.parquet"))

@@ -119,7 +119,7 @@ class Store:
 
     def look(self) -> None:
         """See what the segments on disk hold; those that can't be read are named in `damaged`."""
-        for path in sorted(self.folder.glob("segment-*.parquet")):
+        for path in segments_in(self.folder):
             try:
                 self._place_of |= dict.fromkeys(_contents(path), path)
             except (OSError, ValueError, pa.ArrowException):
@@ -169,13 +169,23 @@ def _digest(content: bytes) -> str:
     return hashlib.sha256(content).hexdigest()[:32]
 
 
+def segments_in(folder: Path) -> list[Path]:
+    """The segments in a folder, in the order of their names."""
+    return sorted(folder.glob("segment-*.parquet"))
+
+
+def segment_is_whole(path: Path, content: bytes) -> bool:
+    """Whether a segment is as it was written, which the digest in its name tells."""
+    return path.stem.endswith(_digest(content))
+
+
 def _contents(path: Path) -> Iterator[tuple[str, Span]]:
     """What a segment holds.
 
-    raises      ValueError: it is not as it was written, which the digest in its name tells
+    raises      ValueError: it is not as it was written
     """
     content = path.read_bytes()
-    if not path.stem.endswith(_digest(content)):
+    if not segment_is_whole(path, content):
         raise ValueError(f"{path} is damaged")
     table = pq.read_table(io.BytesIO(content), columns=["case", "span", "trials"])
     columns = [table[name].to_pylist() for name in table.column_names]
