@@ -19,7 +19,7 @@ def study():
 
 @pytest.fixture(scope="module")
 def parts(study, tmp_path_factory):
-    """Three parts, each in a store of its own; two conditions of three spans make two spans each."""
+    """Three parts, each in a store of its own, of two conditions of three spans."""
     folders = [tmp_path_factory.mktemp(f"part{number}") for number in (1, 2, 3)]
     trials = [
         run_part(study, number, 3, store=folder / ".store", workers=1).trials
