@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from typing import TYPE_CHECKING, Annotated, ClassVar, Literal, Union
 
 from pydantic import Field
@@ -16,6 +17,9 @@ from filters.hypothesis_filter import (
 )
 from filters.interacting import Modes, OneMode
 from filters.linearisation.rules import gauss_hermite_rule
+from filters.models.motion.target import Target
+from filters.models.record import BadValue
+from filters.models.sensor.sensor import Sensor
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
@@ -25,6 +29,7 @@ from filters.strategies.linearisations import (
     FirstOrder,
     LinearisationKind,
     PointsPerAxis,
+    too_many_points,
 )
 from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
 from filters.track import Scans, Tracks, room_for_tracks
@@ -78,6 +83,20 @@ class GaussianStrategy(Strategy):
     def existence_chain(self) -> Existence:
         """How likely a target is taken to be."""
         return CERTAIN
+
+    def kernel_choice(self) -> tuple[object, ...]:
+        """Kernels are compiled for a linearisation, and for quadrature or none."""
+        return type(self.linearisation), self.detection_points_per_axis is None
+
+    def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
+        """A linearisation, or a quadrature, that the sensor or the state does not allow."""
+        n, points = target.state_size, self.detection_points_per_axis
+        wrong = self.linearisation.misfit(n, sensor)
+        if wrong is not None:
+            yield BadValue(f"linearisation.{wrong.key}", wrong.rule, wrong.remedy)
+        wrong = None if points is None else too_many_points("detection_points_per_axis", points, n)
+        if wrong is not None:
+            yield wrong
 
     def update_rules(self, n: int, m: int) -> UpdateRules:
         """How hypotheses are formed, for states of n and measurements of m numbers."""

@@ -2,15 +2,24 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, get_args
 
 from pydantic import Field
 
 from filters.linearisation.converted import Converted
 from filters.linearisation.first_order import ByJacobian
 from filters.linearisation.iterated import Iterated
-from filters.linearisation.rules import PointRule, cubature_rule, gauss_hermite_rule, unscented_rule
-from filters.models.record import Positive, Real, Record
+from filters.linearisation.rules import (
+    MOST_POINTS,
+    PointRule,
+    cubature_rule,
+    gauss_hermite_rule,
+    unscented_rule,
+)
+from filters.models.record import BadValue, Positive, Real, Record
+from filters.models.sensor import SENSORS
+from filters.models.sensor.position_of import no_position
+from filters.models.sensor.sensor import Sensor
 
 PointsPerAxis = Annotated[int, Field(strict=True, ge=2, le=32)]
 
@@ -21,6 +30,10 @@ class LinearisationKind(Record):
     def settings(self, n: int) -> Any:
         """Settings as kernels take them, for states of n numbers."""
         raise NotImplementedError
+
+    def misfit(self, n: int, sensor: Sensor) -> BadValue | None:
+        """What keeps it from being used for states of n numbers and that sensor."""
+        return None
 
 
 class FirstOrder(LinearisationKind):
@@ -60,14 +73,19 @@ class Unscented(LinearisationKind):
     """Further scale, above minus the size of the state; by default 3 minus that size."""
 
     def settings(self, n: int) -> PointRule:
-        """2 n + 1 points.
-
-        raises      ValueError: kappa not above -n
-        """
+        """2 n + 1 points."""
         kappa = 3.0 - n if self.kappa is None else self.kappa
-        if kappa <= -n:
-            raise ValueError(f"kappa must be above {-n}, minus the size of the state")
         return unscented_rule(n, self.alpha, self.beta, kappa)
+
+    def misfit(self, n: int, sensor: Sensor) -> BadValue | None:
+        """Points at an imaginary distance."""
+        if self.kappa is None or self.kappa > -n:
+            return None
+        return BadValue(
+            "kappa",
+            f"must be above {-n}, minus the numbers in the state",
+            f"leave it out for {3 - n}, or give a larger one",
+        )
 
 
 class Cubature(LinearisationKind):
@@ -96,6 +114,10 @@ class GaussHermite(LinearisationKind):
         """
         return gauss_hermite_rule(n, self.points_per_axis)
 
+    def misfit(self, n: int, sensor: Sensor) -> BadValue | None:
+        """Too many points."""
+        return too_many_points("points_per_axis", self.points_per_axis, n)
+
 
 class ConvertedMeasurements(LinearisationKind):
     """Each detection as a position with a covariance of its own, debiased."""
@@ -106,6 +128,34 @@ class ConvertedMeasurements(LinearisationKind):
     def settings(self, n: int) -> Converted:
         """None."""
         return Converted()
+
+    def misfit(self, n: int, sensor: Sensor) -> BadValue | None:
+        """A measurement that fixes no position."""
+        if sensor.convert is not no_position:
+            return None
+        return BadValue(
+            "kind",
+            "needs detections that fix a position, which those of this sensor don't",
+            f"choose another, or a sensor of kind {' or '.join(_position_fixing())}",
+        )
+
+
+def too_many_points(key: str, per_axis: int, n: int) -> BadValue | None:
+    """What is wrong with so many Gauss-Hermite points along each axis of the state, if anything."""
+    if per_axis**n <= MOST_POINTS:
+        return None
+    most = max(fewer for fewer in range(1, per_axis) if fewer**n <= MOST_POINTS)
+    return BadValue(
+        key,
+        f"makes {per_axis**n:,} points for a state of {n} numbers, beyond {MOST_POINTS:,}",
+        f"take at most {most}",
+    )
+
+
+def _position_fixing() -> list[str]:
+    """Kinds of sensor whose measurement fixes a position."""
+    fixing = (sensor for sensor in SENSORS if sensor.convert is not no_position)
+    return [get_args(sensor.model_fields["kind"].annotation)[0] for sensor in fixing]
 
 
 LINEARISATIONS = (
