@@ -84,10 +84,6 @@ class GaussianStrategy(Strategy):
         """How likely a target is taken to be."""
         return CERTAIN
 
-    def kernel_choice(self) -> tuple[object, ...]:
-        """Kernels are compiled for a linearisation, and for quadrature or none."""
-        return type(self.linearisation), self.detection_points_per_axis is None
-
     def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
         """A linearisation, or a quadrature, that the sensor or the state does not allow."""
         n, points = target.state_size, self.detection_points_per_axis

@@ -171,7 +171,8 @@ UNSCENTED = {
 def test_pda_on_range_and_bearing_equals_the_reference_library_scan_by_scan(kind, place):
     """Ten trials of 12 scans; the second place lies where bearings pass 180 degrees.
 
-    First order to rounding, unscented to 5e-4 m and 5e-5 of variances; the two differ by more than ten times that.
+    First order to rounding, unscented to 5e-4 m and 5e-5 of a variance; the two differ by more
+    than ten times that.
     """
     settings = UNSCENTED[kind]
     world = world_of(RANGE_BEARING, [*place, 2.0, 1.0], np.diag([25.0, 16.0, 1.0, 0.25]))
