@@ -28,6 +28,14 @@ def rivals(results: Results) -> list[str]:
     return candidates(results) or list(strategy_key(results).levels)
 
 
+def compared(results: Results, metric: str) -> list[str]:
+    """The strategies of a metric; the reference of a posterior gap is no way from itself."""
+    names = strategy_key(results).levels
+    if not metric.startswith("posterior_gap_"):
+        return list(names)
+    return [name for name in names if name != results.document["posterior_gap"]["reference"]]
+
+
 def best_counts(results: Results, metric: str) -> dict[str, int]:
     """In how many conditions each candidate is not told apart from the best in a metric."""
     return {
@@ -44,9 +52,8 @@ def is_best(names: object, metric: str) -> bool:
 def finding(results: Results, metric: str) -> str:
     """One sentence, without its full stop, on a metric over all conditions of the results."""
     quantity = metric_quantity(results, metric)
-    rows = results.summary[results.summary[STRATEGY].isin(rivals(results))]
-    if metric.startswith("posterior_gap_"):  # the reference is no way from itself
-        rows = rows[rows[STRATEGY] != results.document["posterior_gap"]["reference"]]
+    names = [name for name in rivals(results) if name in compared(results, metric)]
+    rows = results.summary[results.summary[STRATEGY].isin(names)]
     if rows[metric].isna().all():
         why = "No trial held track" if quantity.held else "Nothing was counted"
         return f"{why}: there is no {quantity.name}"

@@ -60,14 +60,23 @@ def short_name(key: str) -> tuple[str, str]:
     """Last part of a dotted name in words, and the unit that it ends with.
 
     'scene.sensor.clutter_density_per_m2' gives ('clutter density', '1/m2'). A factor on an assumed
-    value is named by the value; what a strategy assumes is called assumed.
+    value is named by the value; what a strategy assumes is called assumed. Clutter that comes back
+    is told from other clutter.
     """
     parts = key.split(".")
     if parts[-1] == "factor" and len(parts) > 1:
         name, unit = f"{_name_and_unit(parts[-2])[0]} factor", ""
     else:
         name, unit = _name_and_unit(parts[-1])
+    if "persistent_clutter" in parts[:-1]:
+        name = f"persistent clutter {name}"
     return (f"assumed {name}" if "assumes" in parts else name), unit
+
+
+def strategy_of(key: str) -> str:
+    """The strategy that a dotted name is a setting or an assumption of; empty for all others."""
+    first, _, rest = key.partition(".")
+    return rest.split(".")[0] if first == "strategies" else ""
 
 
 def swept_keys(results: Results) -> dict[str, SweptKey]:
@@ -173,13 +182,21 @@ def _name_and_unit(part: str) -> tuple[str, str]:
 
 def _unambiguous(keys: Sequence[str]) -> dict[str, tuple[str, str]]:
     """Short names; where two are alike, led by the parts in which their dotted names differ."""
-    names = {key: short_name(key) for key in keys}
+    told = {key: _name_with_strategy(key) for key in keys}
+    names = dict(told)
     for key in keys:
-        alike = [other.split(".") for other in keys if short_name(other) == short_name(key)]
+        alike = [other.split(".") for other in keys if told[other] == told[key]]
         if len(alike) > 1:
-            name, unit = short_name(key)
+            name, unit = told[key]
             names[key] = (f"{' '.join(_what_differs(key.split('.'), alike))} {name}".strip(), unit)
     return names
+
+
+def _name_with_strategy(key: str) -> tuple[str, str]:
+    """Short name and unit; a strategy's settings and assumptions name it."""
+    name, unit = short_name(key)
+    strategy = strategy_of(key)
+    return (f"{name} of {strategy}" if strategy else name), unit
 
 
 def _what_differs(parts: list[str], alike: list[list[str]]) -> list[str]:

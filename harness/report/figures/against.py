@@ -18,6 +18,7 @@ from harness.report.figures.page import new_page, say_empty
 from harness.report.figures.panels import (
     MOST_PANELS,
     in_step_with,
+    named_keys,
     panel_grid,
     panel_height,
     panel_keys,
@@ -32,7 +33,7 @@ from harness.report.figures.scales import (
     swept_places,
     swept_scale,
 )
-from harness.report.findings import finding, finding_along, listed, trials_run
+from harness.report.findings import compared, finding, finding_along, listed, trials_run
 from harness.report.numerals import typeset_sentence
 from harness.report.quantities import Quantity, metric_quantity
 from harness.report.style import house_style, looks
@@ -44,8 +45,6 @@ from harness.report.swept import (
     plain,
     resolve,
     settings_of,
-    strategy_key,
-    swept_keys,
 )
 
 if TYPE_CHECKING:
@@ -69,7 +68,7 @@ def metric_against(results: Results, metric: str, key: str, fixed: Setting | Non
     fixed = {resolve(results, name): level for name, level in (fixed or {}).items()}
     view = narrowed(results, fixed)
     quantity = metric_quantity(view, metric)
-    x_key = swept_keys(view).get(resolve(view, key))
+    x_key = named_keys(view).get(resolve(view, key))
     if x_key is None:
         raise ValueError("strategies are curves; draw a metric against a swept key")
     others = panel_keys(view, x_key.key)
@@ -79,17 +78,17 @@ def metric_against(results: Results, metric: str, key: str, fixed: Setting | Non
             f"{metric} against {x_key.name} would take {grid.count} panels, more than "
             f"{MOST_PANELS}; fix the value of one of {', '.join(others)}"
         )
-    names = strategy_key(view).levels
+    names = compared(view, metric)
     layout = layout_with_names(grid, panel_height(grid), names)
     x_scale = swept_scale(x_key, layout.panel_width)
     layout = replace(layout, tick_lines=x_scale.tick_lines)
     bands = len(x_key.levels) > _FEW and _too_narrow(x_key, x_scale, layout.panel_width, len(names))
     page = new_page(
         _title(view, metric, x_key, grid.count),
-        _subtitle(view, quantity, x_key, others, fixed, bands),
+        _subtitle(view, metric, x_key, others, fixed, bands),
         layout,
     )
-    curves = _curves(view, metric, quantity, x_key, settings)
+    curves = _curves(view, metric, quantity, x_key, settings, names)
     if not bands:
         step = _step(x_key, x_scale, layout.panel_width, len(names))
         curves = [_spread_out(panel, x_scale, step) for panel in curves]
@@ -137,15 +136,16 @@ def _curves(
     quantity: Quantity,
     x_key: SweptKey,
     settings: Sequence[Mapping[str, Any]],
+    names: Sequence[str],
 ) -> list[dict[str, Curve]]:
     """For each panel, the curve of each strategy, its points ascending in x."""
     keys = list(settings[0])
     panels = {tuple(setting.values()): place for place, setting in enumerate(settings)}
     places = swept_places(x_key)
     points: list[dict[str, list[tuple[float, ...]]]] = [
-        {name: [] for name in strategy_key(results).levels} for _ in settings
+        {name: [] for name in names} for _ in settings
     ]
-    for case in results.summary.to_dict("records"):
+    for case in results.summary[results.summary[STRATEGY].isin(names)].to_dict("records"):
         panel = panels[tuple(plain(case[key]) for key in keys)]
         values = (
             quantity.scale * float(case.get(column, math.nan))
@@ -192,13 +192,14 @@ def _title(results: Results, metric: str, x_key: SweptKey, panels: int) -> str:
 
 def _subtitle(
     view: Results,
-    quantity: Quantity,
+    metric: str,
     x_key: SweptKey,
     others: Sequence[str],
     fixed: Setting,
     bands: bool,
 ) -> str:
-    keys = swept_keys(view)
+    keys, quantity = named_keys(view), metric_quantity(view, metric)
+    shown = view.summary[view.summary[STRATEGY].isin(compared(view, metric))]
     parts = [f"{quantity.name[0].upper()}{quantity.name[1:]} against {x_key.name}"]
     if others:
         parts[0] += f", by {listed([keys[key].name for key in others])}"
@@ -208,8 +209,8 @@ def _subtitle(
         parts.append(setting_in_figure(keys, fixed))
     parts += [*fixed_conditions(view), trials_run(view)]
     parts.append("bands: 95 % intervals" if bands else "bars: 95 % intervals, side by side")
-    if quantity.rate:
-        parts.append("hollow, at the lower edge: none")
+    if quantity.rate and (shown[metric] == 0).any():
+        parts.append("hollow, at the lower edge with pale lines to it: none")
     if quantity.held:
         parts.append("over trials that held track")
     if quantity.expected is not None:

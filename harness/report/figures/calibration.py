@@ -13,7 +13,7 @@ from harness.report import style
 from harness.report.figures.conditions import fixed_conditions
 from harness.report.figures.curve_names import layout_with_names, name_curves, name_curves_below
 from harness.report.figures.curves import Curve, curve_end, draw_curve
-from harness.report.figures.over_time import Told, told_conditions
+from harness.report.figures.over_time import Told, how_conditions_are_told, told_conditions
 from harness.report.figures.page import Grid, Layout, new_page, say_empty
 from harness.report.figures.scales import Scale, apply_x, apply_y
 from harness.report.findings import listed, rivals, trials_run
@@ -79,6 +79,7 @@ def coverage_of_regions(results: Results) -> Figure:
                 "level, less that level",
                 *fixed_conditions(results),
                 trials_run(results),
+                *how_conditions_are_told(told),
                 "bands: 95 % intervals; dotted: 0, as expected of an honest strategy; below: "
                 "over-confident; over trials that held track",
             ]

@@ -13,7 +13,7 @@ from harness.report.figures.against import LOSS, clutter_key, metric_against
 from harness.report.figures.calibration import coverage_of_regions, transform_histograms
 from harness.report.figures.gap import GAPS, gap_over_time
 from harness.report.figures.over_time import over_time
-from harness.report.figures.panels import MOST_PANELS, panel_keys, setting_in_words
+from harness.report.figures.panels import MOST_PANELS, named_keys, panel_keys, setting_in_words
 from harness.report.figures.side_by_side import SHOWN, side_by_side
 from harness.report.quantities import metric_quantity
 from harness.report.swept import STRATEGY, Setting, resolve, settings_of, swept_keys
@@ -30,7 +30,8 @@ def all_figures(results: Results) -> dict[str, Figure]:
 
     Track loss, position error and ANEES against the clutter (or else the key of most levels), track
     loss against each other swept key, and a few telling conditions over time. Without a sweep, the
-    strategies side by side. Of whole posteriors, what the study asks for.
+    strategies side by side. Of whole posteriors, what the study asks for; the gap against the same
+    key as well.
     """
     main = main_key(results)
     asked = posterior_figures(results)
@@ -41,6 +42,8 @@ def all_figures(results: Results) -> dict[str, Figure]:
         figures |= figures_against(results, metric, main)
     for key in panel_keys(results, main):
         figures |= figures_against(results, LOSS, key)
+    if GAPS[0] in results.summary:
+        figures |= figures_against(results, GAPS[0], main)
     return {**figures, "over_time": over_time(results), **asked}
 
 
@@ -66,7 +69,7 @@ def figures_against(results: Results, metric: str, key: str) -> dict[str, Figure
         raise ValueError("figures are drawn against a swept key; name one of them, not 'strategy'")
     quantity = metric_quantity(results, metric)
     settings = _settings_of_figures(results, key)
-    name = f"{quantity.name} over {swept_keys(results)[key].name}"
+    name = f"{quantity.name} over {named_keys(results)[key].name}"
     figures: dict[str, Figure] = {}
     for setting in _evenly_chosen(settings, MOST_FIGURES):
         at = f" at {setting_in_words(results, setting)}" if setting else ""

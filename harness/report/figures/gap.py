@@ -8,9 +8,14 @@ from typing import TYPE_CHECKING
 from harness.evidence.results import Results
 from harness.report.figures.conditions import fixed_conditions
 from harness.report.figures.curve_names import layout_with_names, name_curves_below
-from harness.report.figures.over_time import Told, draw_row, told_conditions
+from harness.report.figures.over_time import (
+    Told,
+    draw_row,
+    how_conditions_are_told,
+    told_conditions,
+)
 from harness.report.figures.page import Grid, new_page
-from harness.report.findings import case_in_words, rivals, trials_run
+from harness.report.findings import case_in_words, compared, rivals, trials_run
 from harness.report.numerals import typeset_sentence
 from harness.report.quantities import METRICS
 from harness.report.style import house_style, looks
@@ -33,7 +38,7 @@ def gap_over_time(results: Results) -> Figure:
     grid = Grid(len(told), len(told) * len(GAPS), column_heads=heads)
     layout = layout_with_names(grid, _PANEL_HEIGHT, names)
     title = typeset_sentence(_title(results, told))
-    page = new_page(title, _subtitle(results), layout)
+    page = new_page(title, _subtitle(results, told), layout)
     for row, (metric, name) in enumerate(zip(GAPS, _AXES, strict=True)):
         draw_row(page, row, told, metric, replace(METRICS[metric], name=name), results, names)
     name_curves_below(page, {name: looks(results)[name] for name in names})
@@ -41,9 +46,8 @@ def gap_over_time(results: Results) -> Figure:
 
 
 def _compared(results: Results) -> list[str]:
-    """The candidates but for the reference, which is no way from itself."""
-    reference = results.document["posterior_gap"]["reference"]
-    return [name for name in rivals(results) if name != reference]
+    """The candidates but for the reference."""
+    return [name for name in rivals(results) if name in compared(results, GAPS[0])]
 
 
 def _title(results: Results, told: list[Told]) -> str:
@@ -64,13 +68,14 @@ def _title(results: Results, told: list[Told]) -> str:
     return f"{text}, where it is farthest" if len(shown) > 1 else text
 
 
-def _subtitle(results: Results) -> str:
+def _subtitle(results: Results, told: list[Told]) -> str:
     parts = [
         "Integrated squared error between the posteriors of position and velocity (0 % equal, "
         "100 % apart; trials that did not fail), and Kullback-Leibler divergence (trials that held "
         "track), over time",
         *fixed_conditions(results),
         trials_run(results),
+        *how_conditions_are_told(told),
         "dotted: scoring begins",
     ]
     return "; ".join(parts)

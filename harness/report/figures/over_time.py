@@ -15,7 +15,7 @@ from harness.report.figures.conditions import fixed_conditions
 from harness.report.figures.curve_names import layout_with_names, name_curves, name_curves_below
 from harness.report.figures.curves import Curve, curve_end
 from harness.report.figures.page import Grid, Page, new_page, say_empty
-from harness.report.figures.panels import in_figure
+from harness.report.figures.panels import levels_in_figure, named_keys
 from harness.report.figures.scales import Scale, apply_x, apply_y, metric_scale
 from harness.report.findings import case_in_words, rivals, trials_run
 from harness.report.quantities import METRICS, Quantity
@@ -27,7 +27,6 @@ from harness.report.swept import (
     plain,
     settings_of,
     strategy_key,
-    swept_keys,
 )
 
 if TYPE_CHECKING:
@@ -67,7 +66,7 @@ def over_time(results: Results, settings: Sequence[Setting] | None = None) -> Fi
     heads = [one.head for one in told]
     grid = Grid(len(told), len(told) * len(rows), column_heads=heads)
     layout = layout_with_names(grid, _PANEL_HEIGHT, names)
-    page = new_page(_title(results, told), _subtitle(results), layout)
+    page = new_page(_title(results, told), _subtitle(results, told), layout)
     for row, (column, quantity) in enumerate(rows):
         draw_row(page, row, told, column, quantity, results, names)
     name_curves_below(page, {name: looks(results)[name] for name in names})
@@ -105,7 +104,7 @@ def told_conditions(results: Results, settings: Sequence[Setting] | None = None)
 
     raises     ValueError: a setting is no condition or several, or there are more than four
     """
-    keys = swept_keys(results)
+    keys = named_keys(results)
     if settings is None:
         chosen: list[tuple[str, Setting]] = list(telling_conditions(results).items())
     else:
@@ -121,7 +120,7 @@ def told_conditions(results: Results, settings: Sequence[Setting] | None = None)
                 f"{dict(setting)} leaves {len(conditions)} conditions; give a value of each of "
                 f"{', '.join(results.swept)}"
             )
-        lines = [word, *(in_figure(keys[key], level) for key, level in conditions[0].items())]
+        lines = [word, *levels_in_figure(keys, conditions[0])]
         told.append(Told("\n".join(filter(None, lines)), view.summary, view.scans))
     return told
 
@@ -233,12 +232,22 @@ def _title(results: Results, told: Sequence[Told]) -> str:
     return f"{text}, against {_loss(best)} with {best[STRATEGY]}" if len(cases) > 1 else text
 
 
-def _subtitle(results: Results) -> str:
+def how_conditions_are_told(told: Sequence[Told]) -> list[str]:
+    """How the conditions were chosen, unless by the reader or because there is one only."""
+    if not any(one.head.startswith("easiest") for one in told):
+        return []
+    return ["easiest to hardest: by the candidates' mean track loss, then their mean error"]
+
+
+def _subtitle(results: Results, told: Sequence[Told]) -> str:
+    none_lost = any((one.scans["lost"] == 0).any() for one in told)
     parts = [
         "Position RMSE and NEES of the trials that hold track, and lost tracks, over time",
         *fixed_conditions(results),
         trials_run(results),
+        *how_conditions_are_told(told),
         "light band: 95 % chi-square bounds of the mean NEES where most tracks are held",
+        *(["along the lower edge: none lost yet"] if none_lost else []),
         "dotted: scoring begins",
     ]
     return "; ".join(parts)

@@ -4,18 +4,38 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from typing import Any
 
 from harness.evidence.results import Results
 from harness.report.figures.lettering import NO_BREAK_SPACE
 from harness.report.figures.page import Grid
+from harness.report.findings import listed
 from harness.report.numerals import typeset_number, typeset_unit, with_unit
-from harness.report.swept import SweptKey, described, settings_of, swept_keys
+from harness.report.swept import (
+    SweptKey,
+    described,
+    settings_of,
+    short_name,
+    strategy_of,
+    swept_keys,
+)
 
 MOST_PANELS = 12
 MOST_ACROSS = 4
 # Inches, by the number of panels beside each other.
 _PANEL_HEIGHT = {1: 2.7, 2: 1.9, 3: 1.4, 4: 1.15}
+
+
+def named_keys(results: Results) -> dict[str, SweptKey]:
+    """Swept keys as figures name them.
+
+    One setting of several strategies that takes the same values in step has one name, which lists
+    the strategies.
+    """
+    keys = swept_keys(results)
+    return {key: replace(swept, name=_shared_name(results, keys, key))
+            for key, swept in keys.items()}  # fmt: skip
 
 
 def panel_keys(results: Results, drawn: str) -> list[str]:
@@ -32,9 +52,13 @@ def panel_keys(results: Results, drawn: str) -> list[str]:
 
 
 def in_step_with(results: Results, drawn: str) -> list[str]:
-    """Other swept keys whose values change exactly where those of one key do."""
-    keys = swept_keys(results)
-    return [key for key in keys if key != drawn and _in_step(results, keys, key, drawn)]
+    """Other swept keys, by another name, whose values change exactly where those of one key do."""
+    keys = named_keys(results)
+    return [
+        key
+        for key in keys
+        if keys[key].name != keys[drawn].name and _in_step(results, keys, key, drawn)
+    ]
 
 
 def panel_grid(
@@ -44,7 +68,7 @@ def panel_grid(
 
     Two keys in full combination make rows and columns; anything else is laid out line by line.
     """
-    swept = swept_keys(results)
+    swept = named_keys(results)
     settings = settings_of(results, keys) if keys else [{}]
     levels = [swept[key].levels for key in keys]
     if len(keys) == 2 and len(settings) == math.prod(map(len, levels)):
@@ -77,7 +101,12 @@ def in_figure(key: SweptKey, level: Any) -> str:
 
 def setting_in_figure(keys: Mapping[str, SweptKey], setting: Mapping[str, Any]) -> str:
     """A setting as a figure names it."""
-    return ", ".join(in_figure(keys[key], level) for key, level in setting.items())
+    return ", ".join(levels_in_figure(keys, setting))
+
+
+def levels_in_figure(keys: Mapping[str, SweptKey], setting: Mapping[str, Any]) -> list[str]:
+    """The levels of a setting as a figure names them; what has one name is told once."""
+    return list(dict.fromkeys(in_figure(keys[key], level) for key, level in setting.items()))
 
 
 def setting_in_words(results: Results, setting: Mapping[str, Any]) -> str:
@@ -91,6 +120,24 @@ def _columns_for(panels: int) -> int:
     if panels == 4:
         return 2
     return 3 if panels <= 9 else MOST_ACROSS
+
+
+def _shared_name(results: Results, keys: Mapping[str, SweptKey], key: str) -> str:
+    """Name of a key, with all strategies whose same setting takes the same values in step."""
+    sharing = [
+        strategy_of(other)
+        for other in keys
+        if strategy_of(other)
+        and _setting(other) == _setting(key)
+        and keys[other].levels == keys[key].levels
+        and _in_step(results, keys, other, key)
+    ]
+    return f"{short_name(key)[0]} of {listed(sharing)}" if len(sharing) > 1 else keys[key].name
+
+
+def _setting(key: str) -> str:
+    """Dotted name behind that of the strategy."""
+    return key.removeprefix(f"strategies.{strategy_of(key)}.")
 
 
 def _in_step(results: Results, keys: Mapping[str, SweptKey], first: str, second: str) -> bool:

@@ -10,13 +10,13 @@ from harness.report import style
 from harness.report.figures.conditions import fixed_conditions
 from harness.report.figures.lettering import line_height, text_width
 from harness.report.figures.page import Grid, Layout, new_page
-from harness.report.figures.panels import setting_in_figure
+from harness.report.figures.panels import named_keys, setting_in_figure
 from harness.report.figures.scales import Scale, apply_x, metric_scale
 from harness.report.findings import finding, trials_run
 from harness.report.numerals import typeset_sentence
 from harness.report.quantities import METRICS
 from harness.report.style import Look, house_style, looks
-from harness.report.swept import STRATEGY, Setting, narrowed, settings_of, swept_keys
+from harness.report.swept import STRATEGY, Setting, narrowed, settings_of
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
@@ -46,7 +46,7 @@ def side_by_side(results: Results, setting: Setting | None = None) -> Figure:
         typeset_sentence(finding(view, SHOWN[0])),
         "; ".join(
             [
-                *filter(None, [setting_in_figure(swept_keys(results), conditions[0])]),
+                *filter(None, [setting_in_figure(named_keys(results), conditions[0])]),
                 *fixed_conditions(results),
                 trials_run(view),
                 "bars: 95 % intervals; hollow, at the left edge: none; error and ANEES over trials "

@@ -237,6 +237,40 @@ def test_keys_in_step_make_no_panels(study):
     assert "(noise sd in step with it)" in " ".join(texts_of(figure))
 
 
+def test_one_setting_of_several_strategies_in_step_has_one_name(invent):
+    keys = [f"strategies.{name}.max_components" for name in ("mixture", "pda")]
+    grid = invent(sweep={key: [5, 10, 20] for key in keys})
+    rows, scans = (frame[keys[0]] == frame[keys[1]] for frame in (grid.summary, grid.scans))
+    in_step = replace(grid, summary=grid.summary[rows], scans=grid.scans[scans])
+    name = "max components of mixture and pda"
+    for figure in all_figures(in_step).values():
+        texts = " ".join(text.replace("\u00a0", " ") for text in texts_of(figure))
+        assert name in texts
+        assert "in step with" not in texts
+    assert metric_against(in_step, "anees", keys[1]).axes[0].get_xlabel() == name
+    apart = metric_against(grid, "anees", keys[0])
+    assert apart.axes[0].get_xlabel() == "max components of mixture"
+
+
+def test_points_without_a_loss_are_explained_where_there_are_some(one_key):
+    told = "hollow, at the lower edge with pale lines to it: none"
+    assert told in " ".join(texts_of(metric_against(one_key, "track_loss_rate", DENSITY)))
+    summary = one_key.summary[one_key.summary["lost"] > 0]
+    without = metric_against(replace(one_key, summary=summary), "track_loss_rate", DENSITY)
+    assert "hollow" not in " ".join(texts_of(without))
+
+
+def test_over_time_tells_how_its_conditions_were_chosen_and_where_none_is_lost(study, one_key):
+    chosen = "easiest to hardest: by the candidates' mean track loss"
+    assert chosen in " ".join(texts_of(over_time(study)))
+    setting = {DENSITY: float(study.summary[DENSITY].max()), DETECTION: 0.6, NOISE: 20.0}
+    assert chosen not in " ".join(texts_of(over_time(study, [setting])))
+    edge = "along the lower edge: none lost yet"
+    assert edge in " ".join(texts_of(over_time(one_key)))
+    some = replace(one_key, scans=one_key.scans.assign(lost=0.1))
+    assert edge not in " ".join(texts_of(over_time(some)))
+
+
 def test_the_title_is_the_finding_and_the_subtitle_the_conditions(study, one_key):
     assert title_of(metric_against(study, "track_loss_rate", DENSITY)) == (
         "mixture and particles are each best or not told apart from the best in 27 of 27 "

@@ -80,6 +80,13 @@ def test_the_reference_and_who_is_told_the_origins_have_no_curve_of_the_gap(no_s
     assert set(drawn) == {"nearest", "probable", "pda", "particles"}
 
 
+def test_the_gap_is_drawn_against_what_is_swept_without_the_reference(one_key):
+    figures = all_figures(with_posteriors(one_key))
+    panel = figures["posterior_gap_squared_error_over_clutter_density"].axes[0]
+    assert panel.get_ylabel() == "posterior gap, squared error [%]"
+    assert {text.get_text() for text in panel.texts} == set(one_key.strategies) - {"mixture"}
+
+
 def test_results_without_any_value_are_drawn_all_the_same(no_sweep, tmp_path):
     results = with_posteriors(no_sweep)
     calibration = results.calibration.copy()

@@ -31,6 +31,11 @@ DENSITY = "scene.sensor.clutter_density_per_m2"
         ("strategies.mixture.max_components", "max components", ""),
         (f"strategies.pda.assumes{DENSITY[5:]}.factor", "assumed clutter density factor", ""),
         ("strategies.pda.assumes.sensor.noise_sd_m", "assumed noise sd", "m"),
+        (
+            "scene.unmodelled.persistent_clutter.expected_number",
+            "persistent clutter expected number",
+            "",
+        ),
     ],
 )
 def test_a_swept_key_is_called_by_its_last_part_with_the_unit_apart(key, name, unit):
@@ -45,12 +50,21 @@ def test_heads_put_the_unit_in_brackets(study):
     ]
 
 
-def test_names_that_collide_are_led_by_what_differs(invent):
-    keys = ("strategies.mixture.max_components", "strategies.particles.max_components")
+def test_settings_and_assumptions_name_their_strategy(invent):
+    keys = ("strategies.mixture.max_components", f"strategies.pda.assumes{DENSITY[5:]}.factor")
     results = invent(sweep={key: [5, 10] for key in keys})
     assert [swept.name for swept in swept_keys(results).values()] == [
-        "mixture max components",
-        "particles max components",
+        "max components of mixture",
+        "assumed clutter density factor of pda",
+    ]
+
+
+def test_names_that_collide_are_led_by_what_differs(invent):
+    keys = ("scene.target.start_m", "scene.sensor.start_m")
+    results = invent(sweep={key: [5, 10] for key in keys})
+    assert [swept.name for swept in swept_keys(results).values()] == [
+        "target start",
+        "sensor start",
     ]
 
 
