@@ -34,8 +34,8 @@ def named_keys(results: Results) -> dict[str, SweptKey]:
     the strategies.
     """
     keys = swept_keys(results)
-    return {key: replace(swept, name=_shared_name(results, keys, key))
-            for key, swept in keys.items()}  # fmt: skip
+    names = {key: _shared_name(results, keys, key) for key in keys}
+    return {key: replace(keys[key], name=name) for key, name in names.items()}
 
 
 def panel_keys(results: Results, drawn: str) -> list[str]:
