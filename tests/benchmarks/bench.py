@@ -23,7 +23,16 @@ from c_pda import NoCompiler, c_pda
 from harness_rows import two_workers_row, whole_trial_row
 from numpy_pda import numpy_pda
 from reference_pda import reference_pda
-from scenes import CLUTTER_PER_SCAN, SCANS, Drawn, Estimates, drawn, first_trials, linear_model
+from scenes import (
+    CLUTTER_PER_SCAN,
+    RANGE_BEARING_SCENE,
+    SCANS,
+    Drawn,
+    Estimates,
+    drawn,
+    first_trials,
+    linear_model,
+)
 from timing import Record, Timing, interleaved, table
 
 from filters.hypothesis_filter import compiled_filter, room_for
@@ -56,6 +65,14 @@ MIXTURES = (
     (PrunedMixture(kind="pruned-mixture"), 0.16 / 0.25),
     (NScanMixture(kind="n-scan-mixture"), None),
     (RunnallsMixture(kind="runnalls-mixture"), None),
+)
+# PDA on range and bearing, each with the least ratio wanted of a scan of the linear one to its own.
+LINEARISATIONS = (
+    ({"kind": "first-order"}, 1 / 2),
+    ({"kind": "unscented"}, 1 / 4),
+    ({"kind": "cubature"}, 1 / 4),
+    ({"kind": "iterated"}, None),
+    ({"kind": "converted-measurements"}, None),
 )
 PARTICLE_FILTER = ParticleFilter(kind="particle-filter")
 
@@ -159,6 +176,28 @@ def mixture_rows(batch: Drawn) -> list[Record]:
     return rows
 
 
+def linearisation_rows(batch: Drawn) -> list[Record]:
+    """Rows of PDA on range and bearing, and of PD by quadrature, against PDA on a linear sensor."""
+    polar = drawn(TRIALS, RANGE_BEARING_SCENE)
+    strategies = [
+        ProbabilisticDataAssociation(kind="pda", linearisation=how) for how, _ in LINEARISATIONS
+    ]
+    by_quadrature = ProbabilisticDataAssociation(kind="pda", detection_points_per_axis=3)
+    linear, *timings, quadrature = interleaved(
+        lambda: run(PDA, batch),
+        *(lambda strategy=strategy: run(strategy, polar) for strategy in strategies),
+        lambda: run(by_quadrature, batch),
+        repeats=20,
+    )
+    against, counts = "PDA, linear sensor", (polar.scan_count, batch.scan_count)
+    rows = [
+        compared(f"PDA, {how['kind']}, a scan", against, [timing, linear], counts, wanted)
+        for (how, wanted), timing in zip(LINEARISATIONS, timings, strict=True)
+    ]
+    name = "PDA, PD by 3^4 points, a scan"
+    return [*rows, compared(name, against, [quadrature, linear], (batch.scan_count,) * 2, None)]
+
+
 def particle_rows(batch: Drawn) -> list[Record]:
     """Rows of the particle filter, per scan and per particle moved and weighed."""
     few = first_trials(batch, 3)
@@ -179,7 +218,14 @@ def harness_rows(batch: Drawn) -> list[Record]:
     return [*rows, two_workers_row(STRATEGIES)]
 
 
-GROUPS = (pda_rows, strategy_rows, mixture_rows, particle_rows, harness_rows)
+GROUPS = (
+    pda_rows,
+    strategy_rows,
+    mixture_rows,
+    linearisation_rows,
+    particle_rows,
+    harness_rows,
+)
 
 
 def plain_row(name: str, timing: Timing, count: int) -> Record:

@@ -1,4 +1,4 @@
-"""The scenes that every row is measured on, and a linear Gaussian tracker's view of them.
+"""The scenes that rows are measured on, and a linear Gaussian tracker's view of the linear one.
 
 Four states, two measured numbers, on average 16 false detections a scan beside the target's own.
 The target and the sensor are invented.
@@ -51,6 +51,24 @@ SCENE = Scene.model_validate(
     }
 )
 
+# The same target before a sensor of range and bearing, with as many false detections.
+RANGE_BEARING_SCENE = Scene.model_validate(
+    {
+        "scans": SCANS,
+        "scan_interval_s": INTERVAL,
+        "target": SCENE.target,
+        "sensor": {
+            "kind": "range-bearing",
+            "position_m": [200.0, -400.0],
+            "noise_sd_range_m": NOISE_SD,
+            "noise_sd_bearing_deg": 1.0,
+            "detection_probability": DETECTION_PROBABILITY,
+            "clutter_per_scan": CLUTTER_PER_SCAN,
+            "region_range_m": [0.0, SIDE],
+        },
+    }
+)
+
 
 class Drawn(NamedTuple):
     """A batch of trials, and what strategies assume of them."""
@@ -81,12 +99,11 @@ class Model(NamedTuple):
     covariance: np.ndarray  # (4, 4)
 
 
-def drawn(trials: int) -> Drawn:
+def drawn(trials: int, scene: Scene = SCENE) -> Drawn:
     """Draw the first trials."""
     numbers = numbers_of(4107)
-    batch = draw_scenes(SCENE, numbers, 0, trials)
-    axes = SCENE.target.axes
-    assumptions = Assumptions(models_of(SCENE), prior_of(SCENE), axes)
+    batch = draw_scenes(scene, numbers, 0, trials)
+    assumptions = Assumptions(models_of(scene), prior_of(scene), scene.target.axes)
     return Drawn(assumptions, batch.scans_without_origins, batch.scans, numbers)
 
 
