@@ -46,6 +46,7 @@ from filters.track import (
     clear_estimate,
     past_limit,
     scan_of,
+    start_of,
 )
 from filters.update import UpdateRules, explain_by_component, settle
 
@@ -192,6 +193,32 @@ def _distance_of(origin: int, hypotheses: Hypotheses, rows: int) -> float:
 
 
 @helper
+def _report(
+    n: int,
+    strategy: HypothesisStrategy,
+    count: int,
+    existence: float,
+    empty_scans: int,
+    trial: int,
+    k: int,
+    tracks: Tracks,
+    mixture: Mixture,
+) -> bool:
+    """Write what the mixture says after a scan; False if the track is given up there."""
+    estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
+    _estimate(n, strategy.estimate, count, mixture, estimate, spread)
+    ends = existence < strategy.existence.end_below
+    if ends or past_limit(strategy.ending, empty_scans, spread):
+        clear_estimate(n, estimate, spread)
+        return False
+    tracks.present[trial, k] = True
+    keep_mixture(n, mixture, count, trial, k, tracks.posteriors)
+    if tracks.existence.shape[1] > 0:
+        tracks.existence[trial, k] = existence
+    return True
+
+
+@helper
 def _run_trial(
     n: int,
     m: int,
@@ -204,11 +231,15 @@ def _run_trial(
     room: Room,
 ) -> None:
     mixture, hypotheses, modes = room.mixture, room.hypotheses, strategy.modes
-    mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
-    count = start_in_modes(n, modes, mean, prior, mixture)
+    start = start_of(prior, scans, trial)
+    count = start_in_modes(n, modes, start, mixture)
     existence = strategy.existence.start
     empty_scans = 0
-    for k in range(scans.intervals.shape[0]):
+    if start.has_estimate:
+        k = start.scan - 1
+        if not _report(n, strategy, count, existence, empty_scans, trial, k, tracks, mixture):
+            return
+    for k in range(start.scan, scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
         if k > 0:
             existence = predict_existence(strategy.existence, existence)
@@ -227,17 +258,8 @@ def _run_trial(
             tracks.own_distance[trial, k] = _distance_of(scan.origin, hypotheses, rows)
 
         count = strategy.reduce(hypotheses, rows, scan.origin, strategy.settings, mixture)
-
-        estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
-        _estimate(n, strategy.estimate, count, mixture, estimate, spread)
-        ends = existence < strategy.existence.end_below
-        if ends or past_limit(strategy.ending, empty_scans, spread):
-            clear_estimate(n, estimate, spread)
+        if not _report(n, strategy, count, existence, empty_scans, trial, k, tracks, mixture):
             return
-        tracks.present[trial, k] = True
-        keep_mixture(n, mixture, count, trial, k, tracks.posteriors)
-        if tracks.existence.shape[1] > 0:
-            tracks.existence[trial, k] = existence
 
 
 @functools.cache

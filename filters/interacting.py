@@ -28,7 +28,7 @@ from filters.mixture import (
     room_for_mixture,
 )
 from filters.models.contract import MotionModel
-from filters.track import Prior
+from filters.track import Start
 
 
 class OneMode(NamedTuple):
@@ -66,24 +66,24 @@ def room_for_mixing(n: int, modes: Modes) -> Mixture | None:
 
 
 @helper
-def _start_in_one(n: int, modes: OneMode, mean: Any, prior: Prior, out: Mixture) -> int:
-    """Write the prior as one component."""
+def _start_in_one(n: int, modes: OneMode, start: Start, out: Mixture) -> int:
+    """Write the start as one component."""
     out.weights[0] = 1.0
     out.modes[0] = 0
     forget_history(out.histories[0])
-    copy_gaussian(n, mean, prior.covariance, out.means[0], out.covariances[0])
+    copy_gaussian(n, start.mean, start.covariance, out.means[0], out.covariances[0])
     return 1
 
 
 @helper
-def _start_in_several(n: int, modes: SeveralModes, mean: Any, prior: Prior, out: Mixture) -> int:
-    """Write the prior as one component for each mode; return their number."""
+def _start_in_several(n: int, modes: SeveralModes, start: Start, out: Mixture) -> int:
+    """Write the start as one component for each mode; return their number."""
     count = modes.start.shape[0]
     for mode in range(count):
         out.weights[mode] = modes.start[mode]
         out.modes[mode] = mode
         forget_history(out.histories[mode])
-        copy_gaussian(n, mean, prior.covariance, out.means[mode], out.covariances[mode])
+        copy_gaussian(n, start.mean, start.covariance, out.means[mode], out.covariances[mode])
     return count
 
 

@@ -17,7 +17,7 @@ from filters.compiled import helper, kernel
 from filters.models.contract import Models
 from filters.particles.cloud import Cloud, cloud_moments, copy_from_sources, spread_evenly
 from filters.particles.nearness import has_something_near
-from filters.particles.proposal import propose, start_from
+from filters.particles.proposal import draw_start, propose, start_from
 from filters.particles.resampling import are_uneven, choose_sources
 from filters.particles.roughening import roughen
 from filters.particles.weighing import measure_particles, weigh_by_scan
@@ -31,6 +31,7 @@ from filters.track import (
     clear_estimate,
     past_limit,
     scan_of,
+    start_of,
 )
 from filters.update import Gate
 
@@ -43,6 +44,27 @@ class ParticleStrategy(NamedTuple):
     roughening: float  # the factor K, 0 for none
     gate: Gate  # only to tell whether a scan had anything near, for ending the track
     ending: Ending
+
+
+@helper
+def _report(
+    n: int,
+    strategy: ParticleStrategy,
+    empty_scans: int,
+    trial: int,
+    k: int,
+    tracks: Tracks,
+    cloud: Cloud,
+) -> bool:
+    """Write what the particles say after a scan; False if the track is given up there."""
+    mean, spread = tracks.means[trial, k], tracks.covariances[trial, k]
+    cloud_moments(n, cloud, mean, spread)
+    if past_limit(strategy.ending, empty_scans, spread):
+        clear_estimate(n, mean, spread)
+        return False
+    tracks.present[trial, k] = True
+    keep_samples(n, cloud.weights, cloud.states, trial, k, tracks.posteriors)
+    return True
 
 
 @helper
@@ -65,12 +87,18 @@ def _run_trial(
     A scan's random numbers are in this order: those of the proposal, particle after particle; those
     of resampling; those of roughening.
     """
-    prior_mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
-    start_from(n, prior_mean, prior.covariance, cloud)
+    start = start_of(prior, scans, trial)
+    start_from(n, start, cloud)
     spread_evenly(cloud)
     cloud.step[0].log_evidence = 0.0
     empty_scans = 0
-    for k in range(scans.intervals.shape[0]):
+    if start.has_estimate:
+        k = start.scan - 1
+        open_at(numbers, first_trial + trial, STRATEGY, k)
+        draw_start(n, numbers, cloud)
+        if not _report(n, strategy, empty_scans, trial, k, tracks, cloud):
+            return
+    for k in range(start.scan, scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
         open_at(numbers, first_trial + trial, STRATEGY, k)
         propose(n, m, proposal, models, scan, k == 0, numbers, cloud)
@@ -81,14 +109,8 @@ def _run_trial(
         if not weigh_by_scan(m, proposal, models, scan, cloud):
             tracks.impossible[trial] += 1
         tracks.scans_run[trial] += 1
-
-        mean, spread = tracks.means[trial, k], tracks.covariances[trial, k]
-        cloud_moments(n, cloud, mean, spread)
-        if past_limit(strategy.ending, empty_scans, spread):
-            clear_estimate(n, mean, spread)
+        if not _report(n, strategy, empty_scans, trial, k, tracks, cloud):
             return
-        tracks.present[trial, k] = True
-        keep_samples(n, cloud.weights, cloud.states, trial, k, tracks.posteriors)
         if are_uneven(cloud.weights, strategy.resample_below):
             choose_sources(cloud.weights, strategy.resampling, numbers, cloud.sources)
             copy_from_sources(n, cloud)

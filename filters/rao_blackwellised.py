@@ -40,10 +40,12 @@ from filters.track import (
     Ending,
     Prior,
     Scans,
+    Start,
     Tracks,
     clear_estimate,
     past_limit,
     scan_of,
+    start_of,
 )
 from filters.update import UpdateRules
 
@@ -78,13 +80,13 @@ def room_for_sampling(particles: int) -> Sampling:
 
 
 @helper
-def _start(n: int, mean: Any, covariance: Any, mixture: Mixture) -> None:
-    """Let every particle begin with the prior."""
+def _start_alike(n: int, start: Start, mixture: Mixture) -> None:
+    """Let every particle begin with the start."""
     particles = mixture.weights.shape[0]
     for i in range(particles):
         mixture.weights[i] = 1.0 / particles
         mixture.modes[i] = 0
-        copy_gaussian(n, mean, covariance, mixture.means[i], mixture.covariances[i])
+        copy_gaussian(n, start.mean, start.covariance, mixture.means[i], mixture.covariances[i])
         forget_history(mixture.histories[i])
 
 
@@ -149,11 +151,19 @@ def _run_trial(
     """
     mixture, hypotheses = room.mixture, room.hypotheses
     particles = mixture.weights.shape[0]
-    mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
-    _start(n, mean, prior.covariance, mixture)
+    start = start_of(prior, scans, trial)
+    _start_alike(n, start, mixture)
     sampling.log_evidence[0] = 0.0
     empty_scans = 0
-    for k in range(scans.intervals.shape[0]):
+    if start.has_estimate:
+        k = start.scan - 1
+        if past_limit(strategy.ending, empty_scans, start.covariance):
+            return
+        estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
+        copy_gaussian(n, start.mean, start.covariance, estimate, spread)
+        tracks.present[trial, k] = True
+        keep_mixture(n, mixture, particles, trial, k, tracks.posteriors)
+    for k in range(start.scan, scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
         open_at(numbers, first_trial + trial, STRATEGY, k)
         rows, predicted, log_total = explain_scan(

@@ -14,11 +14,26 @@ ORIGIN_UNKNOWN = -2
 
 
 class Prior(NamedTuple):
-    """What a strategy is told of the target at the first scan."""
+    """What a strategy knows of the target at the start: what it is told, or takes from detections.
+
+    What each trial has of its own, where that is not empty, stands in place of what all share.
+    """
 
     mean: np.ndarray  # (n,)
     covariance: np.ndarray  # (n, n)
-    means: np.ndarray = np.empty((0, 0))  # (trials, n) in place of the mean, where not empty
+    means: np.ndarray = np.empty((0, 0))  # (trials, n)
+    covariances: np.ndarray = np.empty((0, 0, 0))  # (trials, n, n)
+    # (trials,) scan that the start is taken from, the number of scans if there is no start
+    scans: np.ndarray = np.empty(0, np.int64)
+
+
+class Start(NamedTuple):
+    """Where one trial starts."""
+
+    mean: Any  # (n,)
+    covariance: Any  # (n, n)
+    scan: int  # the first to update with
+    has_estimate: bool  # at the scan before: the start, taken from it
 
 
 class Scans(NamedTuple):
@@ -89,6 +104,17 @@ def tracks_of(tracks: Tracks, rows: slice) -> Tracks:
     del columns["posteriors"]
     rows_of = {name: column[rows] for name, column in columns.items()}
     return Tracks(**rows_of, posteriors=NOT_ASKED)
+
+
+@helper
+def start_of(prior: Prior, scans: Scans, trial: int) -> Start:
+    """Where a trial starts; behind its last scan if nowhere."""
+    mean = prior.means[trial] if prior.means.shape[0] > 0 else prior.mean
+    covariance = prior.covariances[trial] if prior.covariances.shape[0] > 0 else prior.covariance
+    if prior.scans.shape[0] > 0:
+        scan = prior.scans[trial]
+        return Start(mean, covariance, scan + 1, scan < scans.intervals.shape[0])
+    return Start(mean, covariance, 0, False)
 
 
 @helper

@@ -47,7 +47,7 @@ from filters.models.contract import Models, SensorModel
 from filters.particles.cloud import DETECTIONS, Cloud
 from filters.particles.weighing import NO_TRACE, fill_log_clutter
 from filters.random_numbers import Numbers, fill_normals, normal, uniform
-from filters.track import Scan
+from filters.track import Scan, Start
 from filters.update import HALF_LOG_TWO_PI
 
 _MOTION_SHARE = 0.1
@@ -57,13 +57,31 @@ _BY_MOTION = -1
 
 
 @helper
-def start_from(n: int, mean: Any, covariance: Any, cloud: Cloud) -> None:
-    """Expect every particle at the prior's mean, with the prior's spread for noise."""
+def start_from(n: int, start: Start, cloud: Cloud) -> None:
+    """Expect every particle at the start's mean, with the start's spread for noise."""
     step = cloud.step[0]
     for i in range(cloud.weights.shape[0]):
-        copy_gaussian(n, mean, covariance, cloud.moved[i], step.disturbance)
+        copy_gaussian(n, start.mean, start.covariance, cloud.moved[i], step.disturbance)
     factorise_semidefinite(n, step.disturbance, step.root)
     step.filled_for = math.nan
+
+
+@helper
+def _draw_around(n: int, moved: Any, numbers: Numbers, step: Any, state: Any) -> None:
+    """Write moved (n,) with noise of step.root added."""
+    fill_normals(numbers, n, step.normals)
+    for row in range(n):
+        value = moved[row]
+        for k in range(row + 1):
+            value += step.root[row, k] * step.normals[k]
+        state[row] = value
+
+
+@helper
+def draw_start(n: int, numbers: Numbers, cloud: Cloud) -> None:
+    """Draw the particles from the start, where no scan is left to look at."""
+    for i in range(cloud.weights.shape[0]):
+        _draw_around(n, cloud.moved[i], numbers, cloud.step[0], cloud.states[i])
 
 
 @helper
@@ -90,12 +108,7 @@ def propose(
                 factorise_semidefinite(n, step.disturbance, step.root)
                 step.filled_for = scan.interval
             motion.transition(motion.parameters, scan.interval, state, moved)
-        fill_normals(numbers, n, step.normals)
-        for row in range(n):
-            value = moved[row]
-            for k in range(row + 1):
-                value += step.root[row, k] * step.normals[k]
-            state[row] = value
+        _draw_around(n, moved, numbers, step, state)
         if proposal == DETECTIONS:
             cloud.marks[i].log_ratio = 0.0
             if i == 0 or not same_gain:

@@ -24,6 +24,7 @@ from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
 from filters.reductions.keep_one import HEAVIEST, NEAREST, TRUE_ORIGIN
 from filters.reductions.reduction import Reduction
+from filters.strategies.gate import GateProbability, gate_of
 from filters.strategies.linearisations import (
     LINEARISATIONS,
     FirstOrder,
@@ -31,7 +32,7 @@ from filters.strategies.linearisations import (
     PointsPerAxis,
     too_many_points,
 )
-from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
+from filters.strategies.strategy import Assumptions, Strategy
 from filters.track import Scans, Tracks, room_for_tracks
 from filters.update import Gate, UpdateRules
 
@@ -139,7 +140,8 @@ class GaussianStrategy(Strategy):
         tracks = room_for_tracks(scans, n, posteriors, with_existence)
         room = room_for(n, m, strategy.rules, strategy.modes, reduction, scans.most_detections)
         kernel = compiled_filter(n, m)
-        kernel(assumptions.models, strategy, assumptions.prior, scans, tracks, room)
+        prior = self.prior_for(assumptions, scans)
+        kernel(assumptions.models, strategy, prior, scans, tracks, room)
         return tracks
 
 

@@ -13,7 +13,8 @@ from filters.particles.cloud import DETECTIONS, MOTION, bytes_per_particle, clou
 from filters.particles.resampling import STRATIFIED, SYSTEMATIC
 from filters.posteriors import NOT_ASKED, room_for_posteriors
 from filters.random_numbers import Numbers
-from filters.strategies.strategy import Assumptions, GateProbability, Strategy, gate_of
+from filters.strategies.gate import GateProbability, gate_of
+from filters.strategies.strategy import Assumptions, Strategy
 from filters.track import Scans, Tracks, room_for_tracks
 
 ParticleCount = Annotated[int, Field(strict=True, ge=2, le=1_000_000_000)]
@@ -81,7 +82,7 @@ class ParticleFilter(Strategy):
         compiled_particle_filter(n, m, PROPOSALS[self.proposal])(
             assumptions.models,
             settings,
-            assumptions.prior,
+            self.prior_for(assumptions, scans),
             scans,
             first_trial,
             numbers,

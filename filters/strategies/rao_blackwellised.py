@@ -71,7 +71,7 @@ class RaoBlackwellisedParticleFilter(GatedStrategy):
         compiled_rao_blackwellised_filter(n, m)(
             assumptions.models,
             settings,
-            assumptions.prior,
+            self.prior_for(assumptions, scans),
             scans,
             first_trial,
             numbers,

@@ -4,20 +4,17 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable
-from typing import Annotated, Any, ClassVar, NamedTuple
+from typing import Any, ClassVar, NamedTuple
 
 from pydantic import Field
-from scipy.stats import chi2
 
 from filters.models.contract import Models
 from filters.models.motion.target import Target
 from filters.models.record import BadValue, Count, Positive, Record
 from filters.models.sensor.sensor import Sensor
 from filters.random_numbers import Numbers
+from filters.strategies.starts import AnyStart, StartFromPrior
 from filters.track import Ending, Prior, Scans, Tracks
-from filters.update import Gate
-
-GateProbability = Annotated[float, Field(strict=True, allow_inf_nan=False, gt=0.0, le=1.0)]
 
 
 class Assumptions(NamedTuple):
@@ -50,6 +47,8 @@ class Strategy(Record):
 
     ends: TrackEnding = TrackEnding()
     """When the track is given up; by default never."""
+    start: AnyStart = StartFromPrior()
+    """How the track starts: by default from the prior, at the first scan."""
     # Resolved by who reads the study.
     assumes: dict[str, Any] = Field(default_factory=dict)
     """What the strategy is told of target and sensor where it differs from the scene: the same
@@ -77,6 +76,10 @@ class Strategy(Record):
         """
         return ()
 
+    def prior_for(self, assumptions: Assumptions, scans: Scans) -> Prior:
+        """Where each trial's track starts, as kernels take it."""
+        return self.start.begin(assumptions.models, assumptions.prior, scans)
+
     def run(
         self,
         assumptions: Assumptions,
@@ -92,10 +95,3 @@ class Strategy(Record):
         record          whether to keep the posteriors of every scan, for families that have them
         """
         raise NotImplementedError
-
-
-def gate_of(probability: float, measurement_size: int) -> Gate:
-    """Gate of a probability PG, the chi-square quantile for that size; 1 is no gate."""
-    if probability >= 1.0:
-        return Gate(1.0, math.inf)
-    return Gate(probability, float(chi2.ppf(probability, measurement_size)))

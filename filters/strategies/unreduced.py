@@ -7,8 +7,8 @@ from typing import Literal
 
 from filters.reductions.keep_all import keep_all
 from filters.reductions.reduction import Reduction
+from filters.strategies.gate import gate_of
 from filters.strategies.gaussian import GaussianStrategy
-from filters.strategies.strategy import gate_of
 from filters.track import Scans
 from filters.unreduced import capacity_unreduced, components_recorded
 from filters.update import Gate

@@ -28,6 +28,7 @@ def warm_up(tasks: Iterable[Task], tell: Callable[[], None] = lambda: None) -> N
                 combination = (
                     type(case.strategy),
                     *case.strategy.kernel_choice(),
+                    type(case.strategy.start),
                     *_models(task.scene),
                     *_models(case.assumed),
                 )

@@ -182,6 +182,10 @@ EVERY_STRATEGY = """
     settings = {"proposal": "detections", "resampling": "stratified", "roughening": 0.1}
     strategies.append(particle_filter(particles=30, ends={"empty_scans": 3}, **settings))
     strategies.append(rao_blackwellised(particles=12))
+    two_point = {"kind": "two-point", "fastest_m_per_s": 3.0}
+    strategies += [pda(start=two_point), rao_blackwellised(particles=12, start=two_point)]
+    one_point = {"kind": "one-point", "velocity_sd_m_per_s": 1.0}
+    strategies.append(particle_filter(particles=30, start=one_point))
     found = [run_on(world, strategy, scans) for strategy in strategies]
     told = scans._replace(origins=drawn.origins.astype(np.int64))
     found.append(run_on(world, known_association(), told))

@@ -32,7 +32,7 @@ from filters.rao_blackwellised import (
 )
 from filters.reductions.keep_all import keep_all
 from filters.strategies import UnreducedMixture
-from filters.strategies.strategy import gate_of
+from filters.strategies.gate import gate_of
 from filters.track import Prior, room_for_tracks
 from filters.update import UpdateRules
 

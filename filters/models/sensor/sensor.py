@@ -115,6 +115,11 @@ class Sensor(Place):
         noise = noise_parameters(self.noise_deviations(), self.noise_factor_over_range)
         return np.concatenate([noise, self.own_parameters()])
 
+    @property
+    def fixes_position(self) -> bool:
+        """Whether a detection is converted into a position."""
+        return self.convert is not no_position
+
     def functions(self) -> tuple[Any, Any]:
         """Measurement and Jacobian as kernels take them."""
         return self.measure.compiled, self.jacobian.compiled

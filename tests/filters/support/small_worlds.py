@@ -41,7 +41,8 @@ from filters.strategies import (
     RaoBlackwellisedParticleFilter,
     RunnallsMixture,
 )
-from filters.strategies.strategy import Assumptions, gate_of
+from filters.strategies.gate import gate_of
+from filters.strategies.strategy import Assumptions
 from filters.track import ORIGIN_UNKNOWN, Ending, Prior, Scans, room_for_tracks
 from filters.update import UpdateRules
 
