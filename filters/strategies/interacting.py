@@ -24,7 +24,8 @@ class ExistenceChain(Record):
     """Whether there is a target at all, from scan to scan (Musicki, Evans and Stankovic 1994)."""
 
     start: Probability
-    """Probability that there is a target at the first scan, before it."""
+    """Probability that there is a target at the first scan, before it; after the scan of the start
+    if that is from detections."""
     survival: Probability
     """Probability that a target that exists still does at the next scan."""
     birth: Probability = 0.0
@@ -46,7 +47,8 @@ class InteractingStrategy(GatedStrategy):
     mode_transition: Transition | None = None
     """Probability of each mode at the next scan, a row for each mode now, in the order of modes."""
     mode_start: Probabilities | None = None
-    """Probability of each mode at the first scan; by default all are equally likely."""
+    """Probability of each mode at the first scan, or at that of a start from detections; by default
+    all are equally likely."""
     existence: ExistenceChain | None = None
     """Follow the probability that there is a target, and end the track by it."""
 

@@ -13,6 +13,7 @@ from filters.models.record import BadValue
 from filters.models.sensor.sensor import Sensor
 from filters.point_mass import point_mass_posteriors
 from filters.random_numbers import Numbers
+from filters.strategies.starts import StartFromPrior
 from filters.strategies.strategy import Assumptions, Strategy
 from filters.track import Scans, Tracks, past_limit, room_for_tracks
 
@@ -32,7 +33,9 @@ class PointMassGrid(Strategy):
     counts_hypotheses: ClassVar[bool] = False
 
     def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
-        """States that no grid can hold."""
+        """States that no grid can hold, and starts that it does not know."""
+        if not isinstance(self.start, StartFromPrior):
+            yield BadValue("start.kind", "is not for a grid", "leave start out")
         if target.state_size > _MOST_NUMBERS:
             yield BadValue(
                 "kind",

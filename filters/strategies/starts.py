@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
-from typing import Annotated, ClassVar, Literal
+from collections.abc import Iterable
+from typing import Annotated, Literal
 
 from pydantic import Field
 from scipy.stats import chi2
 
 from filters.models.contract import Models
-from filters.models.record import Positive, Record
+from filters.models.record import BadValue, Positive, Record
+from filters.models.sensor.sensor import Sensor
 from filters.starts import StartRule, started_from_detections
 from filters.strategies.gate import GateProbability
 from filters.track import Prior, Scans
@@ -20,7 +22,9 @@ class StartFromPrior(Record):
     kind: Literal["prior"] = "prior"
     """Which start: the prior, at the first scan."""
 
-    needs_positions: ClassVar[bool] = False
+    def misfits(self, sensor: Sensor) -> Iterable[BadValue]:
+        """What is wrong with it for the sensor that is assumed."""
+        return ()
 
     def begin(self, models: Models, prior: Prior, scans: Scans) -> Prior:
         """The prior as it is."""
@@ -37,7 +41,15 @@ class StartFromDetections(Record):
     gate_probability: GateProbability = 0.9997
     """Probability that the target's own detection lies in the gate of the start; 1 is no gate."""
 
-    needs_positions: ClassVar[bool] = True
+    def misfits(self, sensor: Sensor) -> Iterable[BadValue]:
+        """Detections that are not converted into positions."""
+        if not sensor.fixes_position:
+            kind = sensor.model_dump()["kind"]
+            yield BadValue(
+                "start.kind",
+                f"takes detections for positions, but those of {kind!r} are not converted into any",
+                "leave start out: the track then starts from the prior",
+            )
 
     def rule(self, gate_limit: float) -> StartRule:
         """The rule as kernels take it."""

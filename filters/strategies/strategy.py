@@ -67,7 +67,7 @@ class Strategy(Record):
 
     def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
         """What is wrong with the settings for the target and the sensor that are assumed."""
-        return ()
+        return self.start.misfits(sensor)
 
     def memory_asked(self, n: int, m: int) -> Iterable[tuple[str, int, int]]:
         """Settings that ask for much working memory: key, number, and bytes of each.

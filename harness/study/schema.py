@@ -304,19 +304,6 @@ class Rules(Record):
         return self
 
     @model_validator(mode="after")
-    def _starts_have_positions(self) -> Self:
-        for name, strategy in self.strategies.items():
-            if strategy.start.needs_positions and not self.scene.sensor.fixes_position:
-                kind = self.scene.sensor.model_dump()["kind"]
-                raise BadValue(
-                    f"strategies.{name}.start.kind",
-                    "takes detections for positions, "
-                    f"but those of the sensor {kind!r} are not converted into any",
-                    "leave start out: the track then starts from the prior",
-                )
-        return self
-
-    @model_validator(mode="after")
     def _the_gap_has_a_reference(self) -> Self:
         if self.posterior_gap is None:
             return self

@@ -35,9 +35,16 @@ def test_a_start_needs_detections_that_fix_a_position(said_of):
     swept = '"scene.sensor.noise_sd_bearing_deg" = [1.0, 2.0]'
     assert said_of(PDA, (POSITION, BEARING), (SWEEP, swept)) == [
         'fog.toml:25: strategies.pda.start.kind = "one-point": takes detections for positions, '
-        "but those of the sensor 'bearing' are not converted into any; "
+        "but those of 'bearing' are not converted into any; "
         "leave start out: the track then starts from the prior"
     ]
+
+
+def test_a_grid_starts_from_the_prior_alone(said_of):
+    grid = ONE.replace('"pda"', '"point-mass-grid"')
+    assert said_of(('kind = "pda"', grid))[-1] == (
+        'fog.toml:26: strategies.pda.start.kind = "one-point": is not for a grid; leave start out'
+    )
 
 
 def test_a_key_of_the_other_start_is_unknown_here(said_of):
