@@ -87,6 +87,7 @@ class GaussianStrategy(Strategy):
 
     def misfits(self, target: Target, sensor: Sensor) -> Iterable[BadValue]:
         """A linearisation, or a quadrature, that the sensor or the state does not allow."""
+        yield from super().misfits(target, sensor)
         n, points = target.state_size, self.detection_points_per_axis
         wrong = self.linearisation.misfit(n, sensor)
         if wrong is not None:

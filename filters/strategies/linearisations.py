@@ -18,7 +18,6 @@ from filters.linearisation.rules import (
 )
 from filters.models.record import BadValue, Positive, Real, Record
 from filters.models.sensor import SENSORS
-from filters.models.sensor.position_of import no_position
 from filters.models.sensor.sensor import Sensor
 
 PointsPerAxis = Annotated[int, Field(strict=True, ge=2, le=32)]
@@ -131,7 +130,7 @@ class ConvertedMeasurements(LinearisationKind):
 
     def misfit(self, n: int, sensor: Sensor) -> BadValue | None:
         """A measurement that fixes no position."""
-        if sensor.convert is not no_position:
+        if sensor.fixes_position():
             return None
         return BadValue(
             "kind",
@@ -154,7 +153,7 @@ def too_many_points(key: str, per_axis: int, n: int) -> BadValue | None:
 
 def _position_fixing() -> list[str]:
     """Kinds of sensor whose measurement fixes a position."""
-    fixing = (sensor for sensor in SENSORS if sensor.convert is not no_position)
+    fixing = (sensor for sensor in SENSORS if sensor.fixes_position())
     return [get_args(sensor.model_fields["kind"].annotation)[0] for sensor in fixing]
 
 

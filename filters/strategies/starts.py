@@ -43,7 +43,7 @@ class StartFromDetections(Record):
 
     def misfits(self, sensor: Sensor) -> Iterable[BadValue]:
         """Detections that are not converted into positions."""
-        if not sensor.fixes_position:
+        if not sensor.fixes_position():
             kind = sensor.model_dump()["kind"]
             yield BadValue(
                 "start.kind",

@@ -141,8 +141,8 @@ def test_a_position_converted_is_itself_with_the_noise_at_its_range():
     stretch = sensor.convert(sensor.model_parameters(), np.zeros(4), np.array([30.0, 40.0]), out)
     assert stretch == 1.0
     np.testing.assert_allclose(out, [[30.0, 40.0], [16.0, 0.0], [0.0, 16.0]])
-    assert sensor.fixes_position
-    assert not BearingSensor.model_construct().fixes_position
+    assert sensor.fixes_position()
+    assert not BearingSensor.fixes_position()
 
 
 # which detections

@@ -115,10 +115,10 @@ class Sensor(Place):
         noise = noise_parameters(self.noise_deviations(), self.noise_factor_over_range)
         return np.concatenate([noise, self.own_parameters()])
 
-    @property
-    def fixes_position(self) -> bool:
+    @classmethod
+    def fixes_position(cls) -> bool:
         """Whether a detection is converted into a position."""
-        return self.convert is not no_position
+        return cls.convert is not no_position
 
     def functions(self) -> tuple[Any, Any]:
         """Measurement and Jacobian as kernels take them."""
