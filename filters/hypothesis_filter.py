@@ -14,6 +14,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from filters.compiled import helper, kernel
+from filters.detecting import log_or_minus_infinity
 from filters.existence import Existence, predict_existence, update_existence
 from filters.hypotheses import HYPOTHESIS, Component, Hypotheses
 from filters.interacting import (
@@ -48,7 +49,7 @@ from filters.track import (
     scan_of,
     start_of,
 )
-from filters.update import UpdateRules, explain_by_component, settle
+from filters.update import Gate, UpdateRules, explain_by_component, settle
 
 ESTIMATE_MEAN = 0
 ESTIMATE_HEAVIEST = 1
@@ -173,15 +174,12 @@ def _estimate(n: int, choice: int, count: int, mixture: Mixture, mean: Any, spre
 
 
 @helper
-def must_be_detected(models: Models, scan: Scan, hypotheses: Hypotheses, rows: int) -> bool:
-    """Whether the model says that the target can't be missed, wherever it is."""
-    for h in range(rows):
-        detected = models.detection.probability(
-            models.detection.parameters, scan.site, hypotheses.means[h]
-        )
-        if detected < 1.0:
-            return False
-    return True
+def must_be_detected(gate: Gate, log_ratio: float) -> bool:
+    """Whether, with nothing in the gate, the model says that the target can't be missed.
+
+    The scan's hypotheses then weigh 1 - PG together, up to rounding, and more if they can.
+    """
+    return log_ratio <= log_or_minus_infinity(1.0 - gate.probability) + 1e-9
 
 
 @helper
@@ -252,7 +250,7 @@ def _run_trial(
         empty_scans = empty_scans + 1 if nothing_in_gate else 0
         tracks.hypotheses[trial] += rows
         tracks.scans_run[trial] += 1
-        if nothing_in_gate and must_be_detected(models, scan, hypotheses, rows):
+        if nothing_in_gate and must_be_detected(strategy.rules.gate, log_ratio):
             tracks.impossible[trial] += 1
         if scan.origin >= 0:
             tracks.own_distance[trial, k] = _distance_of(scan.origin, hypotheses, rows)

@@ -173,7 +173,7 @@ def _run_trial(
         empty_scans = empty_scans + 1 if nothing_in_gate else 0
         tracks.hypotheses[trial] += rows
         tracks.scans_run[trial] += 1
-        if nothing_in_gate and must_be_detected(models, scan, hypotheses, rows):
+        if nothing_in_gate and must_be_detected(strategy.rules.gate, log_total):
             tracks.impossible[trial] += 1
         sampling.log_evidence[0] += log_total
 

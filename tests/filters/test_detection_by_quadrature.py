@@ -201,6 +201,19 @@ def test_a_single_point_with_weight_counts_but_moves_nothing():
     np.testing.assert_allclose(rows.covariances[0, 0, 0], 400.0 / (1.0 - middle), rtol=1e-12)
 
 
+def test_an_empty_scan_is_impossible_only_if_all_points_must_be_seen():
+    """The mean lies where PD is 1 and stays there; most points of a wide prediction do not."""
+    sensor = position_sensor(2, NOISE_SD, 0.9, CLUTTER)
+    world = world_of(sensor, np.zeros(4), P, detection_by(seen_within, 30.0))
+    sure = world_of(sensor, np.zeros(4), P, detection_by(constant_probability, 1.0))
+    scans = as_scans([[[]]], 2)
+    for gate in (1.0, 0.9):
+        by_quadrature = pda(detection_points_per_axis=5, gate_probability=gate)
+        assert run_on(world, by_quadrature, scans).impossible == [0]
+        assert run_on(sure, by_quadrature, scans).impossible == [1]
+        assert run_on(world, pda(gate_probability=gate), scans).impossible == [1]
+
+
 def test_nothing_seen_for_long_drifts_into_the_blind_zone():
     """Twenty empty scans near an edge beyond which PD is 0; at the mean the estimate stays."""
     world = world_with(detection_by(falling_probability, 0.95, 110.0, 5.0))
