@@ -2,6 +2,10 @@
 PYTHON ?= python3
 BIN := .venv/bin
 STUDY ?= studies/harbour_approach.toml
+# Studies of the README, by the figure that makes their point.
+SHOWN_BY_LOSS := dense_clutter coastal_threshold blind_zone turning_target wrong_clutter_density persistent_clutter
+SHOWN_OVER_TIME := bearings_only
+SHOWN := $(SHOWN_BY_LOSS) $(SHOWN_OVER_TIME) mixture_sizes
 
 .PHONY: study test lint bench pictures clean
 
@@ -22,11 +26,12 @@ bench: .venv/test-ready
 
 # The README's pictures, from the studies that ship.
 pictures: .venv/run-ready
-	$(BIN)/trackassay run studies/harbour_approach.toml
-	$(BIN)/trackassay run studies/dense_clutter.toml
 	mkdir -p studies/pictures
+	for study in harbour_approach $(SHOWN); do $(BIN)/trackassay run studies/$$study.toml || exit 1; done
 	cp results/harbour_approach/figures/track_loss_over_clutter_density.svg results/harbour_approach/figures/over_time.svg studies/pictures/
-	cp results/dense_clutter/figures/track_loss_over_clutter_density.svg studies/pictures/dense_track_loss.svg
+	for study in $(SHOWN_BY_LOSS); do cp results/$$study/figures/track_loss_over_*.svg studies/pictures/$$study.svg || exit 1; done
+	cp results/mixture_sizes/figures/posterior_gap_squared_error_over_*.svg studies/pictures/mixture_sizes.svg
+	for study in $(SHOWN_OVER_TIME); do cp results/$$study/figures/over_time.svg studies/pictures/$$study.svg || exit 1; done
 
 clean:
 	rm -rf .venv build *.egg-info

@@ -217,19 +217,35 @@ def _first_scored_time(results: Results, scans: pd.DataFrame) -> float:
 
 
 def _title(results: Results, told: Sequence[Told]) -> str:
-    """What the worst and the best candidate lose where most is lost."""
-    hardest = max((one.summary for one in told), key=lambda cases: cases[_LOSS].max())
+    """What the worst and the best candidate lose where most is lost, or else how they err."""
+    hardest = max((one.summary for one in told), key=_worst)
     compared = hardest[hardest[STRATEGY].isin(rivals(results))]
     cases = compared.dropna(subset=_LOSS).to_dict("records")
     cases.sort(key=lambda case: case[_LOSS])
     if not any(case["lost"] for case in cases):
-        return "No strategy loses a track"
+        return f"No strategy loses a track{_errors(compared, len(told) > 1)}"
     best, worst = cases[0], cases[-1]
     where = "in the hardest condition shown" if len(told) > 1 else "in the end"
     if best[_LOSS] == worst[_LOSS] and len(cases) > 1:
         return f"Every strategy has lost {_loss(worst)} of its tracks {where}"
     text = f"{worst[STRATEGY]} has lost {_loss(worst)} of its tracks {where}"
     return f"{text}, against {_loss(best)} with {best[STRATEGY]}" if len(cases) > 1 else text
+
+
+def _worst(cases: pd.DataFrame) -> tuple[float, float]:
+    """The largest share of lost tracks, then the largest error, of a condition's strategies."""
+    return cases[_LOSS].max(), cases["rmse_position"].max()
+
+
+def _errors(compared: pd.DataFrame, among_several: bool) -> str:
+    """The largest and the smallest error, to go on with where no track is lost."""
+    cases = compared.dropna(subset="rmse_position").to_dict("records")
+    if len(cases) < 2:
+        return ""
+    cases.sort(key=lambda case: case["rmse_position"])
+    small, large = (case_in_words(_ERROR, case, "rmse_position") for case in (cases[0], cases[-1]))
+    text = f"; {cases[-1][STRATEGY]} errs by {large}, {cases[0][STRATEGY]} by {small}"
+    return f"{text}, in the hardest condition shown" if among_several else text
 
 
 def how_conditions_are_told(told: Sequence[Told]) -> list[str]:

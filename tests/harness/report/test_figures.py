@@ -271,6 +271,17 @@ def test_over_time_tells_how_its_conditions_were_chosen_and_where_none_is_lost(s
     assert edge not in " ".join(texts_of(over_time(some)))
 
 
+def test_over_time_tells_the_errors_where_no_track_is_lost(one_key):
+    summary = one_key.summary.assign(lost=0, track_loss_rate=0.0)
+    title = title_of(over_time(replace(one_key, summary=summary)))
+    rivals = summary[(summary[DENSITY] > 9e-4) & (summary["strategy"] != "known")]
+    worst = rivals.loc[rivals["rmse_position"].idxmax()]
+    assert title.startswith(f"No strategy loses a track; {worst['strategy']} errs by ")
+    assert float(title.split("errs by ")[1].split(" ")[0]) == pytest.approx(
+        worst["rmse_position"], rel=0.05
+    )
+
+
 def test_the_title_is_the_finding_and_the_subtitle_the_conditions(study, one_key):
     assert title_of(metric_against(study, "track_loss_rate", DENSITY)) == (
         "mixture and particles are each best or not told apart from the best in 27 of 27 "
