@@ -13,7 +13,7 @@ study: .venv/run-ready
 	$(BIN)/trackassay run $(STUDY)
 
 test: .venv/test-ready
-	$(BIN)/python -m pytest
+	$(BIN)/python -m pytest --numprocesses auto --dist loadfile
 
 lint: .venv/lint-ready
 	$(BIN)/ruff check .
