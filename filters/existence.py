@@ -13,6 +13,7 @@ import math
 from typing import NamedTuple
 
 from filters.compiled import helper
+from filters.hypotheses import TotalWeight, log_total
 
 
 class Existence(NamedTuple):
@@ -34,8 +35,8 @@ def predict_existence(chain: Existence, probability: float) -> float:
 
 
 @helper
-def update_existence(probability: float, log_ratio: float) -> float:
-    """Probability after a scan; log_ratio log L, infinite in either direction too."""
+def update_existence(probability: float, likelier: TotalWeight) -> float:
+    """Probability after a scan; likelier L, which may be 0 or infinite."""
     if probability == 0.0 or probability == 1.0:
         return probability
-    return 1.0 / (1.0 + (1.0 - probability) / probability * math.exp(-log_ratio))
+    return 1.0 / (1.0 + (1.0 - probability) / probability * math.exp(-log_total(likelier)))

@@ -78,12 +78,25 @@ def own_covariance(hypotheses: Hypotheses, row: int) -> int:
     return hypotheses.covariances.shape[0] - hypotheses.means.shape[0] + row
 
 
-@helper
-def normalise(table: Any, rows: int) -> float:
-    """Set weight = exp(log_weight) / sum, safe at any magnitude; not all may be -inf.
+class TotalWeight(NamedTuple):
+    """Sum of a table's weights before they were normalised, as exp(log_scale) * sum.
 
-    returns     log of the sum
+    It is how much likelier the scan is with the target than as clutter alone.
     """
+
+    log_scale: float  # infinite where the scan needs a target, -inf where it is impossible
+    sum: float
+
+
+@helper
+def log_total(total: TotalWeight) -> float:
+    """Logarithm of a total weight."""
+    return total.log_scale + math.log(total.sum)
+
+
+@helper
+def normalise(table: Any, rows: int) -> TotalWeight:
+    """Set weight = exp(log_weight) / sum, safe at any magnitude; not all may be -inf."""
     heaviest = -math.inf
     for h in range(rows):
         heaviest = max(heaviest, table[h].log_weight)
@@ -92,6 +105,7 @@ def normalise(table: Any, rows: int) -> float:
         weight = math.exp(table[h].log_weight - heaviest)
         table[h].weight = weight
         total += weight
+    scale = 1.0 / total
     for h in range(rows):
-        table[h].weight /= total
-    return heaviest + math.log(total)
+        table[h].weight *= scale
+    return TotalWeight(heaviest, total)

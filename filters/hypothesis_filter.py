@@ -16,7 +16,7 @@ import numpy as np
 from filters.compiled import helper, kernel
 from filters.detecting import log_or_minus_infinity
 from filters.existence import Existence, predict_existence, update_existence
-from filters.hypotheses import HYPOTHESIS, Component, Hypotheses
+from filters.hypotheses import HYPOTHESIS, Component, Hypotheses, TotalWeight, log_total
 from filters.interacting import (
     Modes,
     branch_of,
@@ -135,10 +135,10 @@ def explain_scan(
     count: int,
     is_first: bool,
     room: Room,
-) -> tuple[int, int, float]:
+) -> tuple[int, int, TotalWeight]:
     """Fill the table of hypotheses of one scan; the prior holds at the first scan as it is.
 
-    returns     rows; components predicted; and log total weight, see settle
+    returns     rows; components predicted; and total weight, see settle
     """
     mixture, hypotheses = room.mixture, room.hypotheses
     branches = branches_of(modes, is_first)
@@ -174,12 +174,12 @@ def _estimate(n: int, choice: int, count: int, mixture: Mixture, mean: Any, spre
 
 
 @helper
-def must_be_detected(gate: Gate, log_ratio: float) -> bool:
+def must_be_detected(gate: Gate, total: TotalWeight) -> bool:
     """Whether, with nothing in the gate, the model says that the target can't be missed.
 
     The scan's hypotheses then weigh 1 - PG together, up to rounding, and more if they can.
     """
-    return log_ratio <= log_or_minus_infinity(1.0 - gate.probability) + 1e-9
+    return log_total(total) <= log_or_minus_infinity(1.0 - gate.probability) + 1e-9
 
 
 @helper
@@ -233,29 +233,27 @@ def _run_trial(
     count = start_in_modes(n, modes, start, mixture)
     existence = strategy.existence.start
     empty_scans = 0
-    if start.has_estimate:
-        k = start.scan - 1
-        if not _report(n, strategy, count, existence, empty_scans, trial, k, tracks, mixture):
-            return
-    for k in range(start.scan, scans.intervals.shape[0]):
-        scan = scan_of(scans, models.sensor.sites, trial, k)
-        if k > 0:
-            existence = predict_existence(strategy.existence, existence)
-            count = interact(n, modes, mixture, count, room.mixing)
-        rows, predicted, log_ratio = explain_scan(
-            n, m, models, strategy.rules, modes, scan, count, k == 0, room
-        )
-        existence = update_existence(existence, log_ratio)
-        nothing_in_gate = rows == predicted
-        empty_scans = empty_scans + 1 if nothing_in_gate else 0
-        tracks.hypotheses[trial] += rows
-        tracks.scans_run[trial] += 1
-        if nothing_in_gate and must_be_detected(strategy.rules.gate, log_ratio):
-            tracks.impossible[trial] += 1
-        if scan.origin >= 0:
-            tracks.own_distance[trial, k] = _distance_of(scan.origin, hypotheses, rows)
+    # A start that is an estimate already is reported as it is.
+    for k in range(start.scan - int(start.has_estimate), scans.intervals.shape[0]):
+        if k >= start.scan:
+            scan = scan_of(scans, models.sensor.sites, trial, k)
+            if k > 0:
+                existence = predict_existence(strategy.existence, existence)
+                count = interact(n, modes, mixture, count, room.mixing)
+            rows, predicted, total = explain_scan(
+                n, m, models, strategy.rules, modes, scan, count, k == 0, room
+            )
+            existence = update_existence(existence, total)
+            nothing_in_gate = rows == predicted
+            empty_scans = empty_scans + 1 if nothing_in_gate else 0
+            tracks.hypotheses[trial] += rows
+            tracks.scans_run[trial] += 1
+            if nothing_in_gate and must_be_detected(strategy.rules.gate, total):
+                tracks.impossible[trial] += 1
+            if scan.origin >= 0:
+                tracks.own_distance[trial, k] = _distance_of(scan.origin, hypotheses, rows)
 
-        count = strategy.reduce(hypotheses, rows, scan.origin, strategy.settings, mixture)
+            count = strategy.reduce(hypotheses, rows, scan.origin, strategy.settings, mixture)
         if not _report(n, strategy, count, existence, empty_scans, trial, k, tracks, mixture):
             return
 

@@ -19,7 +19,7 @@ from typing import Any, NamedTuple
 import numpy as np
 
 from filters.compiled import helper, kernel
-from filters.hypotheses import Hypotheses
+from filters.hypotheses import Hypotheses, log_total
 from filters.hypothesis_filter import Room, explain_scan, must_be_detected
 from filters.interacting import OneMode
 from filters.mixture import (
@@ -166,16 +166,16 @@ def _run_trial(
     for k in range(start.scan, scans.intervals.shape[0]):
         scan = scan_of(scans, models.sensor.sites, trial, k)
         open_at(numbers, first_trial + trial, STRATEGY, k)
-        rows, predicted, log_total = explain_scan(
+        rows, predicted, total = explain_scan(
             n, m, models, strategy.rules, strategy.modes, scan, particles, k == 0, room
         )
         nothing_in_gate = rows == predicted
         empty_scans = empty_scans + 1 if nothing_in_gate else 0
         tracks.hypotheses[trial] += rows
         tracks.scans_run[trial] += 1
-        if nothing_in_gate and must_be_detected(strategy.rules.gate, log_total):
+        if nothing_in_gate and must_be_detected(strategy.rules.gate, total):
             tracks.impossible[trial] += 1
-        sampling.log_evidence[0] += log_total
+        sampling.log_evidence[0] += log_total(total)
 
         estimate, spread = tracks.means[trial, k], tracks.covariances[trial, k]
         _moments(n, hypotheses, rows, estimate, spread)

@@ -22,7 +22,7 @@ from typing import Any, NamedTuple
 
 from filters.compiled import helper
 from filters.detecting import log_or_minus_infinity, weigh_by_detection
-from filters.hypotheses import NOT_DETECTED, Component, Hypotheses, normalise
+from filters.hypotheses import NOT_DETECTED, Component, Hypotheses, TotalWeight, normalise
 from filters.linearisation.choice import compare, given_detection, predict_measurement
 from filters.linearisation.room import UpdateRoom
 from filters.models.contract import Models
@@ -120,15 +120,14 @@ def explain_by_component(
 
 
 @helper
-def settle(hypotheses: Hypotheses, rows: int) -> float:
+def settle(hypotheses: Hypotheses, rows: int) -> TotalWeight:
     """Complete the table of a scan: the two limits of the model, then normalised weights.
 
     No clutter: hypotheses that need clutter where there is none lose all weight to a detection in
     the gate, as in the limit from above. Impossible under the model (PD = 1, no gate, no
     detection): the prediction is kept.
 
-    returns     log of the total weight: how much likelier the scan is with the target than as
-                clutter alone; inf without clutter, -inf if impossible
+    returns     the total weight; infinite without clutter, 0 if impossible
     """
     table = hypotheses.table
     without_clutter = _some_without_clutter(table, rows)
@@ -141,10 +140,10 @@ def settle(hypotheses: Hypotheses, rows: int) -> float:
         for h in range(rows):
             if table[h].detection == NOT_DETECTED:
                 table[h].log_weight = log_or_minus_infinity(table[h].weight)
-    log_total = normalise(table, rows)
+    total = normalise(table, rows)
     if impossible:
-        return -math.inf
-    return math.inf if without_clutter else log_total
+        return TotalWeight(-math.inf, 1.0)
+    return TotalWeight(math.inf, 1.0) if without_clutter else total
 
 
 @helper
