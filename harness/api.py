@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 
 from harness.evidence.outlook import Outlook, look_ahead, outlook_text
-from harness.evidence.plans import FixedCount, Part, keyed_conditions
+from harness.evidence.plans import WHOLE, FixedCount, Part, keyed_conditions
 from harness.evidence.results import Results
 from harness.evidence.run import run_plan
 from harness.report.figures import all_figures, figures_against, save_figure
@@ -35,9 +35,10 @@ from harness.study.study import Study, load_study
 from harness.trials.driver import Progress, SetAside, drive
 from harness.trials.join import Joined, join
 from harness.trials.reclaim import look_over, reclaim
-from harness.trials.store import StoreError, locked_store
+from harness.trials.store import Store, StoreError, locked_store
+from harness.trials.task import Task
 from harness.trials.warm_up import telling_if_slow, warm_up
-from harness.trials.workers import local_workers
+from harness.trials.workers import Workers, local_workers
 
 RESULTS = Path("results")
 
@@ -83,18 +84,13 @@ def run_study(
     raises      StudyError, ResultsError, StoreError: the input is wrong, nothing was run
     raises      OSError: the disk is full or can't be written; what was stored stays
     """
-    study = study if isinstance(study, Study) else load_study(study)
-    check_memory(study)
-    try_own_sensors(study)
+    study = _runnable(study)
     folder = results_folder(study, into)
     claim_folder(folder, study.name)
     store_folder = folder.parent / ".store" if store is None else Path(store)
     with locked_store(store_folder) as opened:
-        for path in opened.damaged:
-            tell(f"{path}: damaged; its trials are run again")
         processes = local_workers(workers)
-        plan = FixedCount(keyed_conditions(study), study.seed, study.trials, processes.in_flight)
-        missing = plan.next_tasks(lambda key, span: (key, span) in opened)
+        plan, missing = _planned(study, WHOLE, opened, processes, tell)
         if not missing:
             tell("nothing to run: every trial is in the store")
         warm_up(missing, _telling(tell))
@@ -132,25 +128,33 @@ def run_part(
     """
     if not 1 <= number <= of:
         raise ChoiceError(f"there is no part {number} of {of}; parts go from 1 to their number")
-    study = study if isinstance(study, Study) else load_study(study)
-    check_memory(study)
-    try_own_sensors(study)
+    study = _runnable(study)
     folder = RESULTS / ".store" if store is None else Path(store)
     with locked_store(folder) as opened:
-        for path in opened.damaged:
-            tell(f"{path}: damaged; its trials are run again")
         processes = local_workers(workers)
-        plan = FixedCount(
-            keyed_conditions(study),
-            study.seed,
-            study.trials,
-            processes.in_flight,
-            Part(number, of),
-        )
-        missing = plan.next_tasks(lambda key, span: (key, span) in opened)
+        plan, missing = _planned(study, Part(number, of), opened, processes, tell)
         warm_up(missing, _telling(tell))
         aside = drive(plan, opened, processes, watch)
     return PartOutcome(folder, sum(task.trials for task in missing), aside)
+
+
+def _runnable(study: Study | str | Path) -> Study:
+    """A study that this machine can run."""
+    study = study if isinstance(study, Study) else load_study(study)
+    check_memory(study)
+    try_own_sensors(study)
+    return study
+
+
+def _planned(
+    study: Study, part: Part, store: Store, workers: Workers, tell: Callable[[str], None]
+) -> tuple[FixedCount, list[Task]]:
+    """The plan of a part of a study, and its tasks that the store has no results of."""
+    for path in store.damaged:
+        tell(f"{path}: damaged; its trials are run again")
+    conditions = keyed_conditions(study)
+    plan = FixedCount(conditions, study.seed, study.trials, workers.in_flight, part)
+    return plan, plan.next_tasks(lambda key, span: (key, span) in store)
 
 
 def join_stores(others: Sequence[str | Path], store: str | Path | None = None) -> Joined:

@@ -6,12 +6,16 @@ import shutil
 import signal
 import sys
 import traceback
+from collections.abc import Iterable
 from pathlib import Path
 from types import FrameType
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 from typer.exceptions import TyperException
+
+if TYPE_CHECKING:
+    from harness.trials.driver import SetAside
 
 DONE, WRONG_INPUT, BROKEN_OFF, OUR_FAULT, INTERRUPTED, TERMINATED = 0, 2, 4, 5, 130, 143
 _WHERE_TO_REPORT = "please report it with the lines above and the study file"
@@ -89,8 +93,7 @@ def run(
     if not outcome.results.summary.empty:
         drawn = api.draw(outcome.folder) if figures else []
         print(api.closing_words(outcome, drawn, _width()))
-    for one in outcome.set_aside:
-        _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
+    _tell_set_aside(outcome.set_aside)
     if outcome.set_aside:
         _tell("the results lack these trials; run the study again to try them anew")
         raise typer.Exit(BROKEN_OFF)
@@ -111,10 +114,14 @@ def _run_part(study: Path, part: str, store: Path | None, workers: int | None) -
     finally:
         line.close()
     print(f"part {number} of {of}: {outcome.trials:,} trials run, in {outcome.store}")
+    _tell_set_aside(outcome.set_aside)
     if outcome.set_aside:
-        for one in outcome.set_aside:
-            _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
         raise typer.Exit(BROKEN_OFF)
+
+
+def _tell_set_aside(tasks: Iterable[SetAside]) -> None:
+    for one in tasks:
+        _tell(f"set aside after three tries: {one.task.label}: {one.failure.error}")
 
 
 @app.command()
